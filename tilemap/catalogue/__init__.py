@@ -1,0 +1,1 @@
+"""Object tables in, Parquet and answers about it out."""

@@ -1,0 +1,1 @@
+"""An invented volume, made from a seed."""

@@ -1,0 +1,1 @@
+"""Float images in, coded tiles on disk out; knows nothing of particles."""

@@ -1,0 +1,1 @@
+"""Who runs the blocks of a build."""

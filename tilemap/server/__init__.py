@@ -1,0 +1,1 @@
+"""An atlas in, HTTP out; never writes an atlas."""

@@ -1,0 +1,1 @@
+"""Particle files in, chunks of particles in plain units out."""

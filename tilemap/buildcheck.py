@@ -1,0 +1,161 @@
+"""Mistakes in a build file, each put into one sentence: where, what was found, what would be right."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from typing import TYPE_CHECKING, Any, get_args
+
+import pydantic
+import yaml
+
+from tilemap.errors import InputError
+from tilemap.quantities import suggestion
+
+if TYPE_CHECKING:
+    from tilemap.buildfile import BuildFile, Sheet
+
+TILE = 512
+
+
+class BuildLoader(yaml.SafeLoader):
+    """YAML as PyYAML reads it safely, but a key that is written twice is refused instead of the first one lost."""
+
+    def construct_mapping(self, node: yaml.MappingNode, deep: bool = False) -> dict[Any, Any]:
+        seen = set()
+        for key_node, _ in node.value:
+            if isinstance(key_node, yaml.ScalarNode) and key_node.tag != "tag:yaml.org,2002:merge":
+                if key_node.value in seen:
+                    raise yaml.MarkedYAMLError(
+                        problem=f"key {key_node.value!r} is written twice", problem_mark=key_node.start_mark
+                    )
+                seen.add(key_node.value)
+        return super().construct_mapping(node, deep)
+
+
+def sentence(error: yaml.YAMLError | pydantic.ValidationError, model: type[pydantic.BaseModel] | None = None) -> str:
+    """The first thing that is wrong, with its line (YAML) or its key path (schema), and how many more there are."""
+    if isinstance(error, yaml.MarkedYAMLError):
+        mark = error.problem_mark or error.context_mark
+        where = f"line {mark.line + 1}, column {mark.column + 1}: " if mark else ""
+        return f"{where}not YAML as it should be: {error.problem or error.context}"
+    if isinstance(error, yaml.YAMLError):
+        return f"not YAML as it should be: {' '.join(str(error).split())}"
+    # An unknown key explains a missing one ("wieght" and no weight), so it is told first.
+    problems = sorted(error.errors(include_url=False), key=lambda each: each["type"] != "extra_forbidden")
+    more = f" (and {len(problems) - 1} more like this)" if len(problems) > 1 else ""
+    return _tell(problems[0], model) + more
+
+
+def _tell(problem: Any, model: type[pydantic.BaseModel] | None) -> str:
+    place = problem["loc"]
+    path = ".".join(str(part) for part in place if part != "[key]") or "the file"
+    found = problem["input"]
+    match problem["type"]:
+        case "extra_forbidden":
+            return f"{path}: unknown key {place[-1]!r}: {suggestion(place[-1], _known_keys(model, place[:-1]))}"
+        case "missing":
+            return f"{path}: this key is missing"
+        case "value_error":
+            return f"{path}: {problem['ctx']['error']}"
+        case "literal_error":
+            return f"{path}: {found!r} is not one of {problem['ctx']['expected'].replace(chr(39), '')}"
+        case "string_pattern_mismatch":
+            return f"{path}: {found!r} cannot be a name: use letters, digits, and . _ - after the first"
+        case "model_type" | "model_attributes_type" | "dict_type":
+            return (
+                f"{path}: found {found!r} where keys are wanted: {', '.join(_known_keys(model, place)) or 'name: ...'}"
+            )
+        case "list_type" | "tuple_type":
+            return f"{path}: found {found!r} where a list is wanted"
+        case "too_short":
+            return f"{path}: nothing is listed here: give at least {problem['ctx']['min_length']}"
+        case "string_type":
+            return f"{path}: found {found!r} where text is wanted: put it in quotes if it is a name"
+        case "float_parsing" | "float_type" | "int_parsing" | "int_type" | "int_from_float":
+            return f"{path}: found {found!r} where a {'whole ' if 'int' in problem['type'] else ''}number is wanted"
+        case "bool_parsing" | "bool_type":
+            return f"{path}: found {found!r} where true or false is wanted"
+        case _:
+            message = problem["msg"]
+            return f"{path}: found {found!r}: {message[0].lower()}{message[1:]}"
+
+
+def _known_keys(model: type[pydantic.BaseModel] | None, place: Iterable[Any]) -> list[str]:
+    """The keys that the schema has at a place: follow the path through models, dictionaries and lists."""
+    here: Any = model
+    for part in place:
+        if isinstance(here, type) and issubclass(here, pydantic.BaseModel):
+            field = here.model_fields.get(str(part))
+            if field is None:
+                return []
+            here = field.annotation
+        models = _models_in(here)
+        here = models[0] if models else None
+    return list(here.model_fields) if isinstance(here, type) and issubclass(here, pydantic.BaseModel) else []
+
+
+def _models_in(annotation: Any) -> list[type[pydantic.BaseModel]]:
+    if isinstance(annotation, type) and issubclass(annotation, pydantic.BaseModel):
+        return [annotation]
+    return [model for argument in get_args(annotation) for model in _models_in(argument)]
+
+
+def check_whole(build: BuildFile) -> None:
+    """What no single key can know: sheets name species, fields and weights that exist; the picture is whole tiles.
+
+    Raises
+    ------
+    InputError
+        The key path, what it names, and the nearest that exists.
+    """
+    for name, sheet in build.sheets.items():
+        _check_sheet(build, name, sheet)
+    _check_view(build)
+
+
+def _check_sheet(build: BuildFile, name: str, sheet: Sheet) -> None:
+    here = f"sheets.{name}"
+    species = build.snapshot.species.get(sheet.species)
+    if species is None:
+        near = suggestion(sheet.species, build.snapshot.species)
+        raise InputError(f"{here}.species: no species {sheet.species!r} in snapshot.species: {near}")
+    kind = "sum" if sheet.sum is not None else "mean"
+    quantity = str(sheet.sum if sheet.sum is not None else sheet.mean)
+    known = [*species.fields, "mass", "count"]
+    if quantity not in known:
+        raise InputError(
+            f"{here}.{kind}: species {sheet.species!r} has no field {quantity!r}: {suggestion(quantity, known)}"
+        )
+    if quantity == "mass" and species.mass is None:
+        raise InputError(
+            f"{here}.{kind}: species {sheet.species!r} has no mass: give snapshot.species.{sheet.species}.mass"
+        )
+    if kind == "sum":
+        return
+    if quantity == "count":
+        raise InputError(f"{here}.mean: the mean of a count is always one: use sum: count")
+    fitting = [other for other, each in build.sheets.items() if each.sum is not None and each.species == sheet.species]
+    if sheet.weight not in fitting:
+        what = "is no sheet" if sheet.weight not in build.sheets else f"is not a sum sheet of species {sheet.species!r}"
+        near = suggestion(str(sheet.weight), fitting) if fitting else f"add one, such as sum: mass of {sheet.species}"
+        raise InputError(f"{here}.weight: {sheet.weight!r} {what}: {near}")
+
+
+def _check_view(build: BuildFile) -> None:
+    view = build.view
+    if view.flat:
+        for key in ("centre", "width"):
+            if getattr(view, key) is None:
+                raise InputError(f"view.{key}: a chart in {view.unit} has no box to take it from: give {key}")
+        if build.snapshot.cosmology is not None or build.snapshot.redshift is not None:
+            raise InputError(f"snapshot: a chart in {view.unit} has no redshift and no cosmology: leave them out")
+    if isinstance(view.slabs, tuple) and view.depth is not None:
+        raise InputError("view.depth: the slab edges already say the depth: leave one of the two out")
+    if view.width is not None and view.height is not None:
+        rows = view.pixels * view.height / view.width
+        whole = max(1, round(rows / TILE)) * TILE
+        if abs(rows - whole) > 1e-6 * whole:
+            right = view.width * whole / view.pixels
+            raise InputError(
+                f"view.height: {view.height:g} makes {rows:g} rows, not a multiple of {TILE}: the nearest is {right:.9g}"
+            )

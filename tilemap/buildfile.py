@@ -6,6 +6,7 @@ How a mistake is put into a sentence is in `buildcheck`.
 
 from __future__ import annotations
 
+import itertools
 from pathlib import Path
 from typing import Annotated, Any, Literal
 
@@ -85,7 +86,7 @@ def _slabs(value: Any, info: ValidationInfo) -> Any:
         edges = tuple(_length(edge, info) for edge in value)
         if len(edges) < 2:
             raise ValueError("a list of slab edges needs at least two of them")
-        for lower, upper in zip(edges, edges[1:], strict=False):
+        for lower, upper in itertools.pairwise(edges):
             if upper <= lower:
                 raise ValueError(f"slab edges must increase, but {upper:g} follows {lower:g}")
         return edges

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 from functools import cached_property
 from pathlib import Path
@@ -10,14 +10,16 @@ from pathlib import Path
 import astropy.units as u
 import numpy as np
 
-from tilemap.buildfile import BuildFile, Field, Smoothing, Species
+from tilemap.buildfile import BuildFile
 from tilemap.cosmology import Cosmology, scale_factor
 from tilemap.errors import InputError
 from tilemap.quantities import suggestion, unit_named
-from tilemap.sources.reader import Dataset, Header, Reader
-from tilemap.sources.units import NONE, Conversion, Moment, conversion, temperature_factor
+from tilemap.sources.plan import Column, Plan, Planner
+from tilemap.sources.reader import Header, Reader, Wanted
+from tilemap.sources.units import NONE, Moment
 
 _SHOWN = 5
+Test = Callable[[np.ndarray], np.ndarray]
 
 
 @dataclass(frozen=True)
@@ -50,26 +52,6 @@ class Chunk:
         return len(self.position)
 
 
-@dataclass(frozen=True)
-class _Column:
-    """Where one role's numbers lie and how they become plain."""
-
-    dataset: str
-    column: int | None
-    convert: Conversion
-
-
-@dataclass(frozen=True)
-class _Plan:
-    """All that is read of a species; a plain number stands for a constant."""
-
-    rows: tuple[int, ...]
-    position: list[_Column]
-    mass: _Column | float
-    radius: _Column | float | None
-    fields: dict[str, _Column]
-
-
 class Source:
     """The particles of a snapshot.
 
@@ -92,7 +74,8 @@ class Source:
         self._build = build
         self._reader = reader
         self._header: Header = reader.header()
-        self._plans = {name: self._plan(name, species) for name, species in build.snapshot.species.items()}
+        planner = Planner(reader, self._moment)
+        self._plans = {name: planner.plan(name, species) for name, species in build.snapshot.species.items()}
         self.facts  # noqa: B018 - a box that cannot be converted is found here, not in the middle of a build
 
     @cached_property
@@ -160,7 +143,7 @@ class Source:
         plan = self._plan_of(species)
         columns = {name: self._field_of(plan, species, name) for name in fields if name not in ("mass", "count")}
         read = [*plan.position, *(each for each in (plan.mass, plan.radius, *columns.values()) if _is_read(each))]
-        wanted = list(dict.fromkeys((each.dataset, each.column) for each in read if isinstance(each, _Column)))
+        wanted = list(dict.fromkeys((each.dataset, each.column) for each in read if isinstance(each, Column)))
         start = 0
         for part, rows in enumerate(plan.rows):
             if rows == 0:
@@ -176,145 +159,36 @@ class Source:
                 start += len(chunk)
                 yield chunk
 
-    def _plan_of(self, species: str) -> _Plan:
+    def _plan_of(self, species: str) -> Plan:
         if species not in self._plans:
             raise InputError(f"there is no species {species!r}: {suggestion(species, self._plans)}")
         return self._plans[species]
 
     @staticmethod
-    def _field_of(plan: _Plan, species: str, field: str) -> _Column:
+    def _field_of(plan: Plan, species: str, field: str) -> Column:
         if field not in plan.fields:
             near = suggestion(field, [*plan.fields, "mass", "count"])
             raise InputError(f"species {species!r} has no field {field!r}: {near}")
         return plan.fields[field]
 
-    # Planning: every dataset is found, measured and given its conversion before anything is read.
-
-    def _plan(self, name: str, species: Species) -> _Plan:
-        here = f"snapshot.species.{name}"
-        position = self._position(f"{here}.position", species.position)
-        rows = self._reader.look(position[0].dataset).rows
-        mass: _Column | float = 1.0
-        if species.mass is not None:
-            mass = self._mass(f"{here}.mass", species)
-        radius = self._radius(f"{here}.smoothing", species.smoothing)
-        fields = {field: self._column(f"{here}.fields.{field}", spec) for field, spec in species.fields.items()}
-        for column in (*position, mass, radius, *fields.values()):
-            if isinstance(column, _Column):
-                self._same_length(position[0].dataset, column.dataset)
-        return _Plan(rows, position, mass, radius, fields)
-
-    def _position(self, here: str, spec: Field) -> list[_Column]:
-        if spec.dataset is None or spec.column is not None:
-            raise InputError(f"{here}: name a dataset of two or three columns, or two or three datasets of one")
-        looks = [self._number_dataset(here, dataset) for dataset in spec.dataset]
-        widths = [look.width for look in looks]
-        if len(widths) == 1 and widths[0] not in (2, 3):
-            found = "one column" if widths[0] is None else f"{widths[0]} columns"
-            raise InputError(
-                f"{here}: {spec.dataset[0]} has {found}, where a position has three (or two, on a flat chart)"
-            )
-        if len(widths) > 1 and any(width is not None for width in widths):
-            raise InputError(f"{here}: of several datasets each must have one column, but {spec.dataset} have {widths}")
-        return [
-            _Column(dataset, None, self._conversion(here, spec, look, dataset, "length"))
-            for dataset, look in zip(spec.dataset, looks, strict=True)
-        ]
-
-    def _mass(self, here: str, species: Species) -> _Column | float:
-        mass = species.mass
-        assert mass is not None
-        if mass.constant is not None:
-            return mass.constant
-        if mass.table is not None:
-            value, stated = self._reader.table_mass(mass.table)
-            try:
-                convert = conversion(mass, stated, self._moment, dataset=f"mass table entry {mass.table}", kind="mass")
-            except InputError as error:
-                raise InputError(f"{here}: {error}") from error
-            return value * convert.factor
-        return self._column(here, mass, "mass")
-
-    def _radius(self, here: str, smoothing: Smoothing) -> _Column | float | None:
-        if smoothing.field is None:
-            return smoothing.radius
-        column = self._column(f"{here}.field", smoothing.field, "length")
-        factor = 1.0
-        if smoothing.means == "half":
-            factor = 2.0
-        elif smoothing.means == "fwhm":
-            from tilemap.project.kernels import KERNELS
-
-            factor = KERNELS[smoothing.kernel].support_over_fwhm
-        return _Column(column.dataset, column.column, Conversion(column.convert.factor * factor, column.convert.unit))
-
-    def _column(self, here: str, spec: Field, kind: str | None = None) -> _Column:
-        if spec.temperature_from is not None:
-            energy = self._column(f"{here}.temperature_from", spec.temperature_from, "specific energy")
-            factor = energy.convert.factor * temperature_factor(spec.gas or "ionised")
-            return _Column(energy.dataset, energy.column, Conversion(factor, u.K))
-        if spec.dataset is None or len(spec.dataset) != 1:
-            raise InputError(f"{here}: name one dataset, of one column")
-        dataset = spec.dataset[0]
-        look = self._number_dataset(here, dataset)
-        column = spec.column
-        if look.width is None:
-            if column:
-                raise InputError(f"{here}: {dataset} has one column, so column: {column} is not there")
-            column = None
-        elif look.width == 1:
-            column = column or 0
-        elif column is None:
-            raise InputError(
-                f"{here}: {dataset} has {look.width} columns: say which, {{dataset: {dataset}, column: 0}}"
-            )
-        if column is not None and look.width is not None and column >= look.width:
-            raise InputError(
-                f"{here}: {dataset} has {look.width} columns, 0 to {look.width - 1}: {column} is not there"
-            )
-        return _Column(dataset, column, self._conversion(here, spec, look, dataset, kind))
-
-    def _number_dataset(self, here: str, dataset: str) -> Dataset:
-        try:
-            look = self._reader.look(dataset)
-        except InputError as error:
-            raise InputError(f"{here}: {error}") from error
-        if look.dtype_kind not in "fiub":
-            raise InputError(f"{here}: {dataset} does not hold numbers: name another dataset")
-        return look
-
-    def _conversion(self, here: str, spec: Field, look: Dataset, dataset: str, kind: str | None) -> Conversion:
-        try:
-            unstated = not self._reader.states_units
-            return conversion(spec, look.stated, self._moment, dataset=dataset, kind=kind, unstated=unstated)
-        except InputError as error:
-            raise InputError(f"{here}: {error}") from error
-
-    def _same_length(self, first: str, second: str) -> None:
-        pairs = zip(self._reader.parts, self._reader.look(first).rows, self._reader.look(second).rows, strict=True)
-        for part, expected, found in pairs:
-            if expected != found:
-                raise InputError(
-                    f"{part}: {second} has {found} rows and {first} {expected}: they must be the same particles"
-                )
-
     # Bad numbers: counted over the whole species, so that one run tells all.
 
-    def _check(self, chunk: Chunk, species: str, plan: _Plan, columns: dict[str, _Column]) -> None:
+    def _check(self, chunk: Chunk, species: str, plan: Plan, columns: dict[str, Column]) -> None:
         if not _all_finite(chunk.position):
             self._refuse(species, plan, plan.position, np.isfinite, "a position that is not a finite number")
-        if isinstance(plan.radius, _Column) and chunk.radius is not None and not _all_radii(chunk.radius):
+        if isinstance(plan.radius, Column) and chunk.radius is not None and not _all_radii(chunk.radius):
             self._refuse(
                 species, plan, [plan.radius], _good_radius, "a smoothing length that is not above zero and finite"
             )
-        if isinstance(plan.mass, _Column) and not (chunk.mass.min() >= 0 and _all_finite(chunk.mass)):
+        if isinstance(plan.mass, Column) and not (chunk.mass.min() >= 0 and _all_finite(chunk.mass)):
             self._refuse(species, plan, [plan.mass], _good_mass, "a mass that is negative or not a finite number")
         for name, column in columns.items():
             if not _all_finite(chunk.values[name]):
                 self._refuse(species, plan, [column], np.isfinite, f"a {name} that is not a finite number")
 
-    def _refuse(self, species: str, plan: _Plan, columns: list[_Column], good, what: str) -> None:  # type: ignore[no-untyped-def]
-        count, start, first = 0, 0, []
+    def _refuse(self, species: str, plan: Plan, columns: list[Column], good: Test, what: str) -> None:
+        count, start = 0, 0
+        first: list[str] = []
         wanted = [(column.dataset, column.column) for column in columns]
         for part, rows in enumerate(plan.rows):
             for block in self._reader.blocks(part, wanted, 1 << 20) if rows else ():
@@ -334,22 +208,22 @@ class Source:
         )
 
 
-def _is_read(column: _Column | float | None) -> bool:
-    return isinstance(column, _Column)
+def _is_read(column: Column | float | None) -> bool:
+    return isinstance(column, Column)
 
 
-def _make_chunk(start: int, stored: dict, plan: _Plan, columns: dict[str, _Column]) -> Chunk:  # type: ignore[type-arg]
-    def numbers(column: _Column) -> np.ndarray:
+def _make_chunk(start: int, stored: dict[Wanted, np.ndarray], plan: Plan, columns: dict[str, Column]) -> Chunk:
+    def numbers(column: Column) -> np.ndarray:
         return column.convert(stored[column.dataset, column.column])
 
     position = _three_columns([numbers(column) for column in plan.position])
     count = len(position)
     radius: np.ndarray | None = None
-    if isinstance(plan.radius, _Column):
+    if isinstance(plan.radius, Column):
         radius = numbers(plan.radius)
     elif plan.radius is not None:
         radius = np.full(count, plan.radius)
-    mass = numbers(plan.mass) if isinstance(plan.mass, _Column) else np.full(count, plan.mass)
+    mass = numbers(plan.mass) if isinstance(plan.mass, Column) else np.full(count, plan.mass)
     return Chunk(start, position, radius, mass, {name: numbers(column) for name, column in columns.items()})
 
 

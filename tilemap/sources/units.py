@@ -176,6 +176,8 @@ def conversion(
         factor, unit = 1.0, unit_named(given.unit)
     else:
         factor, unit = _stated_unit(stated, moment, dataset, kind, unstated)
+    if isinstance(unit, u.UnrecognizedUnit):
+        raise InputError(f"{dataset} carries the unknown unit {str(unit)!r}: give {{dataset: {dataset}, unit: ...}}")
     if kind is not None and not unit.is_equivalent(_wanted(kind, moment)):
         named = unit.to_string() or "a pure number"
         example = KINDS[kind][1]

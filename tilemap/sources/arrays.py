@@ -124,6 +124,10 @@ class ArrayReader(Reader):
         folders[path.parent][path.stem] = NpyFile(path)
         self.files.append(path)
 
+    def names(self) -> list[str]:
+        """The arrays of the first part."""
+        return list(self._arrays[0])
+
     def look(self, name: str) -> Dataset:
         """Describe the array of that name in every part."""
         found = []

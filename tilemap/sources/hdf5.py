@@ -68,7 +68,7 @@ class Hdf5Reader(Reader):
 
     def __post_init__(self) -> None:
         self.parts = [path.name for path in self.files]
-        self._seen = {name: [] for name in self.wanted}
+        self._seen = {name: [] for name in self.wanted or ()}
         first: dict[str, float] = {}
         for path in self.files:
             with open_file(path) as file:
@@ -105,7 +105,7 @@ class Hdf5Reader(Reader):
                 self._there[group] = list(names)
             else:
                 self._there.setdefault("", []).append(group)
-        for name in self.wanted:
+        for name in self.wanted or ():
             item = file.get(name)
             if not isinstance(item, h5py.Dataset):
                 self._seen[name].append(None)
@@ -119,6 +119,10 @@ class Hdf5Reader(Reader):
         if self._mass_table is None and "Header" in file and "MassTable" in file["Header"].attrs:
             table = np.atleast_1d(np.asarray(file["Header"].attrs["MassTable"], dtype=np.float64))
             self._mass_table = table, _mass_unit(file)
+
+    def names(self) -> list[str]:
+        """The wanted datasets that are there."""
+        return [name for name, seen in self._seen.items() if any(seen)]
 
     def look(self, name: str) -> Dataset:
         """Describe a dataset; a part without it has no rows of it."""

@@ -59,13 +59,18 @@ class Header:
 class Reader(ABC):
     """The files of one snapshot, opened by one kind of library.
 
-    `parts` are the names, for messages, of the pieces that follow each other; `files` all that is read.
+    `wanted` names the datasets that will be asked for (None: any). `parts` are the names, for messages, of the pieces
+    that follow each other; `files` all that is read.
     """
 
     files: list[Path]
-    wanted: list[str]
+    wanted: list[str] | None
     parts: list[str] = field(init=False, default_factory=list)
     states_units = True
+
+    @abstractmethod
+    def names(self) -> list[str]:
+        """The datasets that can be looked at."""
 
     @abstractmethod
     def look(self, name: str) -> Dataset:

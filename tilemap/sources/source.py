@@ -189,6 +189,7 @@ class Source:
     def _refuse(self, species: str, plan: Plan, columns: list[Column], good: Test, what: str) -> None:
         count, start = 0, 0
         first: list[str] = []
+        file = ""
         wanted = [(column.dataset, column.column) for column in columns]
         for part, rows in enumerate(plan.rows):
             for block in self._reader.blocks(part, wanted, 1 << 20) if rows else ():
@@ -198,12 +199,13 @@ class Source:
                     bad |= ~(fine if fine.ndim == 1 else fine.all(axis=1))
                 where = np.flatnonzero(bad)
                 first += [str(start + row) for row in where[: _SHOWN - len(first)]]
+                file = file or (self._reader.parts[part] if len(where) else "")
                 count += len(where)
                 start += len(bad)
         names = ", ".join(column.dataset for column in columns)
         where_text = f"particle {first[0]}" if count == 1 else f"the first are particles {', '.join(first)}"
         raise InputError(
-            f"{names}: {count} of {start} {species} particles have {what} ({where_text}, counted from 0): "
+            f"{file}: {names}: {count} of {start} {species} particles have {what} ({where_text}, counted from 0): "
             "mend or leave out these rows"
         )
 

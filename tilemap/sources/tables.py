@@ -192,6 +192,10 @@ class TableReader(Reader):
         self.parts = [path.name for path in self.files]
         self._tables = [open_table(path, self.wanted) for path in self.files]
 
+    def names(self) -> list[str]:
+        """The columns of the first part."""
+        return self._tables[0].names()
+
     def look(self, name: str) -> Dataset:
         """Describe the column of that name in every part."""
         found = []

@@ -99,8 +99,12 @@ KERNELS: dict[str, Kernel] = {
     kernel.name: kernel
     for kernel in (
         Kernel("cubic", 16 / np.pi, 1.825742, _spline(3, ((1, 1), (-4, 1 / 2))), (1 / 2,)),
-        Kernel("quartic", 5**6 / (512 * np.pi), 2.018932, _spline(4, ((1, 1), (-5, 3 / 5), (10, 1 / 5))), (1 / 5, 3 / 5)),
-        Kernel("quintic", 3**7 / (40 * np.pi), 2.195775, _spline(5, ((1, 1), (-6, 2 / 3), (15, 1 / 3))), (1 / 3, 2 / 3)),
+        Kernel(
+            "quartic", 5**6 / (512 * np.pi), 2.018932, _spline(4, ((1, 1), (-5, 3 / 5), (10, 1 / 5))), (1 / 5, 3 / 5)
+        ),
+        Kernel(
+            "quintic", 3**7 / (40 * np.pi), 2.195775, _spline(5, ((1, 1), (-6, 2 / 3), (15, 1 / 3))), (1 / 3, 2 / 3)
+        ),
         Kernel("wendland-c2", 21 / (2 * np.pi), 1.936492, _wendland(4, (1, 4))),
         Kernel("wendland-c4", 495 / (32 * np.pi), 2.207940, _wendland(6, (1, 6, 35 / 3))),
         Kernel("wendland-c6", 1365 / (64 * np.pi), 2.449490, _wendland(8, (1, 8, 25, 32))),

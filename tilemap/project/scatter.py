@@ -1,0 +1,235 @@
+"""Routing: chunks of particles in, buckets of particles out, one for each (region, slab, level) that has to draw them.
+
+A particle goes to the level at which its kernel is at most `LARGE_PX` pixels wide, and to every region whose image,
+or whose pad for interpolation, the kernel touches. Periodic images are particles like any other.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+from numba import njit
+from numpy.typing import NDArray
+
+from tilemap.project.camera import Camera
+from tilemap.project.stamps import LARGE_PX
+
+TILE = 512
+PAD = 2
+"""Pixels around a coarse image that must be right: what the next finer one, with its own pad, is refined from."""
+PLACE_BITS = 12
+"""Places are kept to 2^-12 pixel of their level: exact in single precision on images up to 4000 pixels, so that the
+same particle is the same in two regions and in two periodic images, and what leaves one arrives in the other."""
+FEWEST_PX = 16
+"""The V-cycle goes down to images of this many pixels a side, where any kernel is drawn as it is."""
+
+
+@dataclass(frozen=True)
+class Plan:
+    """How the work is cut.
+
+    Attributes
+    ----------
+    columns, rows : int
+        Image size at level 0.
+    slabs : int
+    levels : int
+        Levels of the pyramid.
+    top : int
+        Coarsest level of the V-cycle (may be coarser than the pyramid's).
+    local : int
+        Levels below this one are worked on region by region; this one and coarser ones on the whole image.
+    region_px : int
+        Side of a region at level 0: TILE * 2^local, so that a region is a tile at level `local`.
+    """
+
+    columns: int
+    rows: int
+    slabs: int
+    levels: int
+    top: int
+    local: int
+
+    @property
+    def region_px(self) -> int:
+        return TILE << self.local
+
+    @property
+    def regions(self) -> tuple[int, int]:
+        """Rows and columns of regions."""
+        return -(-self.rows // self.region_px), -(-self.columns // self.region_px)
+
+    def size(self, level: int) -> tuple[int, int]:
+        """Rows and columns of the image at a level."""
+        return self.rows >> level, self.columns >> level
+
+    def key(self, region: int, slab: int, level: int) -> int:
+        """Number of the bucket of a region (row-major; -1 for the whole image), a slab and a level."""
+        return int(_key(region, slab, level, self.slabs, self.local, self.regions[0] * self.regions[1], self.top))
+
+    @property
+    def buckets(self) -> int:
+        count = self.regions[0] * self.regions[1]
+        return count * self.slabs * self.local + self.slabs * (self.top - self.local + 1)
+
+
+def make_plan(columns: int, rows: int, slabs: int) -> Plan:
+    """Cut an image whose sides are multiples of TILE."""
+    levels = 1 + max(0, math.ceil(math.log2(max(columns, rows) / TILE)))
+    top = 0
+    while all(side % 2 == 0 and side // 2 >= FEWEST_PX for side in (columns >> top, rows >> top)):
+        top += 1
+    # Large regions waste less on their margins; small ones keep every core busy and fit its cache.
+    local = min(1 if max(columns, rows) <= 4096 else 2, levels - 1, top)
+    return Plan(columns, rows, slabs, levels, top, local)
+
+
+@njit(inline="always")
+def _key(region, slab, level, slabs, local, regions, top):
+    if level < local:
+        return (region * slabs + slab) * local + level
+    return regions * slabs * local + slab * (top - local + 1) + (level - local)
+
+
+@njit(nogil=True, cache=True, error_model="numpy")
+def _route(
+    position,
+    radius,
+    values,
+    axes,
+    u_low,
+    v_high,
+    pixel,
+    period,
+    edges,
+    columns,
+    rows,
+    local,
+    top,
+    place_bits,
+    starts,
+    records,
+):
+    """Count records for each bucket into `starts` (records empty), or place them from `starts` on."""
+    fill = len(records) > 0
+    channels = values.shape[1]
+    slabs = len(edges) - 1
+    region_px = TILE << local
+    region_rows, region_columns = -(-rows // region_px), -(-columns // region_px)
+    regions = region_rows * region_columns
+    per_u, per_v, per_depth = period[0] / pixel, period[1] / pixel, period[2]
+    for index in range(len(position)):
+        depth = position[index, axes[2]]
+        if per_depth > 0.0:
+            depth -= per_depth * math.floor((depth - edges[0]) / per_depth)
+        slab = np.searchsorted(edges, depth, side="right") - 1
+        if slab < 0 or slab >= slabs:
+            continue
+        r = radius[index] / pixel
+        level = 0
+        while level < top and r > LARGE_PX * (1 << level):
+            level += 1
+        # One pixel more than the kernel reaches, and the pad that the next finer level interpolates from.
+        halo = r + (1 << level) * (1.0 if level == 0 else 1.0 + PAD)
+        grain = 2.0 ** (level - place_bits)
+        x = math.floor((position[index, axes[0]] - u_low) / pixel / grain + 0.5) * grain
+        y = math.floor((v_high - position[index, axes[1]]) / pixel / grain + 0.5) * grain
+        first_x, last_x, first_y, last_y = 0, 0, 0, 0
+        if per_u > 0.0:
+            first_x, last_x = math.ceil((-halo - x) / per_u), math.floor((columns + halo - x) / per_u)
+        if per_v > 0.0:
+            first_y, last_y = math.ceil((-halo - y) / per_v), math.floor((rows + halo - y) / per_v)
+        for image_y in range(first_y, last_y + 1):
+            yy = y + image_y * per_v
+            if yy + halo < 0.0 or yy - halo > rows:
+                continue
+            for image_x in range(first_x, last_x + 1):
+                xx = x + image_x * per_u
+                if xx + halo < 0.0 or xx - halo > columns:
+                    continue
+                top_row, bottom_row, left, right = 0, 0, 0, 0
+                if level < local:
+                    top_row = max(0, int(math.floor((yy - halo) / region_px)))
+                    bottom_row = min(region_rows - 1, int(math.floor((yy + halo) / region_px)))
+                    left = max(0, int(math.floor((xx - halo) / region_px)))
+                    right = min(region_columns - 1, int(math.floor((xx + halo) / region_px)))
+                for row in range(top_row, bottom_row + 1):
+                    for column in range(left, right + 1):
+                        key = _key(row * region_columns + column, slab, level, slabs, local, regions, top)
+                        if fill:
+                            place = starts[key]
+                            records[place, 0] = xx - column * region_px
+                            records[place, 1] = yy - row * region_px
+                            records[place, 2] = r
+                            for channel in range(channels):
+                                records[place, 3 + channel] = values[index, channel]
+                        starts[key] += 1
+
+
+class Buckets:
+    """Particles waiting to be drawn, bucket by bucket, in the order in which they came.
+
+    Parameters
+    ----------
+    camera : Camera
+    plan : Plan
+    """
+
+    def __init__(self, camera: Camera, plan: Plan) -> None:
+        self.plan = plan
+        period = np.zeros(3) if camera.period is None else np.asarray(camera.period, dtype=np.float64)
+        self._fixed = (
+            np.array(camera.axes),
+            float(camera.u_low),
+            float(camera.v_high),
+            float(camera.pixel),
+            period,
+            np.asarray(camera.edges, dtype=np.float64),
+            plan.columns,
+            plan.rows,
+            plan.local,
+            plan.top,
+            PLACE_BITS - max(0, math.ceil(math.log2((max(plan.columns, plan.rows) >> plan.local) / 3840))),
+        )
+        self._parts: list[list[NDArray[np.float32]]] = [[] for _ in range(plan.buckets)]
+
+    def route(
+        self, position: NDArray[np.float64], radius: NDArray[np.float64], values: NDArray[np.float32]
+    ) -> tuple[NDArray[np.int64], NDArray[np.float32]]:
+        """Sort one chunk by bucket; safe to call from several threads.
+
+        Parameters
+        ----------
+        position : float64 (n, 3), length unit of the camera
+        radius : float64 (n,), support radius, same unit
+        values : float32 (n, channels), what each particle adds to each channel
+
+        Returns
+        -------
+        starts : int64 (buckets + 1,)
+        records : float32 (m, 3 + channels), x, y and radius in level-0 pixels from the region's corner, then values
+        """
+        counts = np.zeros(self.plan.buckets, dtype=np.int64)
+        nothing = np.empty((0, 3 + values.shape[1]), dtype=np.float32)
+        _route(position, radius, values, *self._fixed, counts, nothing)
+        starts = np.zeros(self.plan.buckets + 1, dtype=np.int64)
+        np.cumsum(counts, out=starts[1:])
+        records = np.empty((starts[-1], 3 + values.shape[1]), dtype=np.float32)
+        if len(records):
+            _route(position, radius, values, *self._fixed, starts[:-1].copy(), records)
+        return starts, records
+
+    def add(self, starts: NDArray[np.int64], records: NDArray[np.float32]) -> None:
+        """Take in what `route` returned; the order of calls is the order of drawing."""
+        for key in np.flatnonzero(np.diff(starts)):
+            self._parts[key].append(records[starts[key] : starts[key + 1]])
+
+    def take(self, region: int, slab: int, level: int) -> NDArray[np.float32] | None:
+        """Remove and return the records of a bucket, None where it is empty."""
+        key = self.plan.key(region, slab, level)
+        parts, self._parts[key] = self._parts[key], []
+        if not parts:
+            return None
+        return parts[0] if len(parts) == 1 else np.concatenate(parts)

@@ -1,0 +1,145 @@
+"""The V-cycle: buckets of particles in, finished images at the finest level out.
+
+Wide kernels are drawn on coarse images, which hold the coefficients of quartic B-splines. Going down, the two-scale
+relation of B-splines (de Boor 1978, A Practical Guide to Splines) gives the same spline on the next finer grid
+exactly: only drawing approximates, however many levels follow. At the finest level the spline is averaged over pixels
+and what is drawn there directly is added. All weights are positive and sum to one, so no sum turns negative, no
+weighted mean leaves the range of its particles, and no mass is lost.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numba import njit
+from numpy.typing import NDArray
+
+from tilemap.project.scatter import PAD, Buckets, Plan
+from tilemap.project.splat import MARGIN, cell_order, draw
+from tilemap.project.stamps import Stamps
+
+CELL_PX = 64
+"""Particles are drawn cell by cell of this size, so that the pixels they touch stay in cache."""
+
+# One row of weights gives the left (upper) child of a coefficient from those 2 before it to 2 after it; mirrored, the
+# right one. Two-scale relation of the quartic B-spline between pixel grids: binomials of 5 over 16.
+TWO_SCALE = np.array([0, 5, 10, 1, 0], dtype=np.float32) / np.float32(16)
+# The same followed by the average over a pixel, which is the quintic B-spline at the integers (1, 26, 66, 26, 1) / 120.
+TWO_SCALE_AVERAGED = np.array([31, 626, 1056, 206, 1], dtype=np.float32) / np.float32(1920)
+
+
+@njit(nogil=True, cache=True, fastmath=True, error_model="numpy")
+def _refine(coarse, fine, corner_row, corner_column, rows, columns, weights):
+    """Add to `fine` (2 rows, 2 columns) what the coarse pixels [0, rows) x [0, columns) from the corner on become."""
+    w0, w1, w2, w3, w4 = weights[0], weights[1], weights[2], weights[3], weights[4]
+    line = np.empty(columns + 4, dtype=np.float32)
+    for channel in range(coarse.shape[0]):
+        for i in range(2 * rows):
+            row = corner_row + i // 2
+            a = coarse[channel, row - 2, corner_column - 2 : corner_column + columns + 2]
+            b = coarse[channel, row - 1, corner_column - 2 : corner_column + columns + 2]
+            c = coarse[channel, row, corner_column - 2 : corner_column + columns + 2]
+            d = coarse[channel, row + 1, corner_column - 2 : corner_column + columns + 2]
+            e = coarse[channel, row + 2, corner_column - 2 : corner_column + columns + 2]
+            if i % 2 == 0:
+                for j in range(columns + 4):
+                    line[j] = w0 * a[j] + w1 * b[j] + w2 * c[j] + w3 * d[j] + w4 * e[j]
+            else:
+                for j in range(columns + 4):
+                    line[j] = w4 * a[j] + w3 * b[j] + w2 * c[j] + w1 * d[j] + w0 * e[j]
+            out = fine[channel, i]
+            for j in range(columns):
+                p, q, r, s, t = line[j], line[j + 1], line[j + 2], line[j + 3], line[j + 4]
+                out[2 * j] += w0 * p + w1 * q + w2 * r + w3 * s + w4 * t
+                out[2 * j + 1] += w4 * p + w3 * q + w2 * r + w1 * s + w0 * t
+
+
+class Cycle:
+    """One species' way from buckets to images.
+
+    Parameters
+    ----------
+    plan : Plan
+    channels : int
+    stamps : Stamps
+    """
+
+    def __init__(self, plan: Plan, channels: int, stamps: Stamps) -> None:
+        self.plan = plan
+        self.channels = channels
+        self.stamps = stamps
+
+    def _empty(self, size: tuple[int, int]) -> NDArray[np.float32]:
+        return np.zeros((self.channels, size[0] + 2 * MARGIN, size[1] + 2 * MARGIN), dtype=np.float32)
+
+    def _refine_into(self, coarse: NDArray[np.float32], fine: NDArray[np.float32], level: int) -> None:
+        """Carry a coarse image to the next finer `level`, with its pad where that is coarse too; both with margins."""
+        pad = PAD if level else 0
+        reach = pad // 2
+        rows, columns = coarse.shape[1] - 2 * MARGIN + 2 * reach, coarse.shape[2] - 2 * MARGIN + 2 * reach
+        inside = fine[:, MARGIN - pad : MARGIN - pad + 2 * rows, MARGIN - pad : MARGIN - pad + 2 * columns]
+        corner = MARGIN - reach
+        _refine(coarse, inside, corner, corner, rows, columns, TWO_SCALE if level else TWO_SCALE_AVERAGED)
+
+    def _draw_into(self, image: NDArray[np.float32], records: NDArray[np.float32] | None, level: int) -> None:
+        if records is None:
+            return
+        scale = 1.0 / (1 << level)
+        order, _ = cell_order(records, scale, CELL_PX, (image.shape[1] - 2 * MARGIN, image.shape[2] - 2 * MARGIN))
+        draw(image, records, order, scale, self.stamps, finest=level == 0)
+
+    def base(self, buckets: Buckets, slab: int) -> NDArray[np.float32]:
+        """The image of a slab at level `plan.local`, from everything drawn at that level and coarser ones.
+
+        Returns
+        -------
+        float32 (channels, rows + 2 MARGIN, columns + 2 MARGIN), right up to PAD pixels around the picture.
+        """
+        image = None
+        for level in range(self.plan.top, self.plan.local - 1, -1):
+            finer = self._empty(self.plan.size(level))
+            if image is not None:
+                self._refine_into(image, finer, level)
+            self._draw_into(finer, buckets.take(-1, slab, level), level)
+            image = finer
+        assert image is not None
+        return image
+
+    def region(
+        self, buckets: Buckets, base: NDArray[np.float32], region: int, slab: int
+    ) -> tuple[NDArray[np.float32], bool]:
+        """The finest image of one region of a slab.
+
+        Parameters
+        ----------
+        buckets : Buckets
+        base : what `base` returned for the slab
+        region : int, row-major
+        slab : int
+
+        Returns
+        -------
+        image : float32 (channels, rows, columns) at level 0
+        drawn : bool, whether there is anything in it
+        """
+        plan = self.plan
+        row, column = divmod(region, plan.regions[1])
+        tile = plan.region_px >> plan.local
+        rows, columns = (
+            min(tile, side - start * tile)
+            for side, start in zip(plan.size(plan.local), (row, column), strict=True)
+        )  # fmt: skip
+        image = base[
+            :,
+            row * tile : row * tile + rows + 2 * MARGIN,
+            column * tile : column * tile + columns + 2 * MARGIN,
+        ]
+        records = [buckets.take(region, slab, level) for level in range(plan.local)]
+        if not image.any() and all(part is None for part in records):
+            return np.zeros((self.channels, rows << plan.local, columns << plan.local), dtype=np.float32), False
+        for level in range(plan.local - 1, -1, -1):
+            rows, columns = rows * 2, columns * 2
+            finer = self._empty((rows, columns))
+            self._refine_into(image, finer, level)
+            self._draw_into(finer, records[level], level)
+            image = finer
+        return image[:, MARGIN:-MARGIN, MARGIN:-MARGIN], True

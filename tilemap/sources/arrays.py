@@ -80,6 +80,8 @@ class NpzMember:
                 for start in range(0, self.shape[0], size):
                     count = min(size, self.shape[0] - start)
                     data = bytearray(stream.read(count * row_bytes))
+                    if start + count == self.shape[0]:
+                        stream.read(1)  # the end has to be met for the checksum to be compared
                     if len(data) < count * row_bytes:
                         raise InputError(f"{self._path}: {self._name} ends after row {start}: write the file again")
                     yield np.frombuffer(data, dtype=self.dtype).reshape(count, *self.shape[1:])

@@ -84,7 +84,7 @@ class Hdf5Reader(Reader):
         missing = parts - len(self.files)
         if missing > 0:
             raise InputError(
-                f"{path}: the snapshot says that it is in {parts} files, {len(self.files)} are named: "
+                f"{path}: the snapshot says that it is in {parts} files, but only {len(self.files)} found: "
                 f"{missing} {'is' if missing == 1 else 'are'} missing"
             )
         if missing < 0 and "parts" in first:

@@ -61,16 +61,17 @@ class FitsTable(OneTable):
         self._plain: list[str] = []
         try:
             with warnings.catch_warnings():
+                warnings.simplefilter("ignore")
                 warnings.filterwarnings("error", message=".*truncated.*")
                 with fits.open(path, memmap=True) as file:
                     for index, hdu in enumerate(file):
                         if isinstance(hdu, fits.BinTableHDU | fits.TableHDU):
                             self._learn(index, hdu)
         except (OSError, Warning, fits.VerifyError, TypeError, ValueError) as error:
-            reason = "truncated" if "truncated" in str(error) else "not a FITS file that can be read"
-            raise InputError(f"{path}: this file is {reason} ({' '.join(str(error).split())[:120]})") from error
+            reason = "this FITS file is truncated" if "truncated" in str(error) else "not a FITS file that can be read"
+            raise InputError(f"{path}: {reason} ({' '.join(str(error).split())[:120]})") from error
         if not self._facts:
-            raise InputError(f"{path}: this FITS file holds no table")
+            raise InputError(f"{path}: this FITS file holds no whole table: it may be truncated, or hold pictures only")
 
     def _learn(self, index: int, hdu: Any) -> None:
         for column in hdu.columns:
@@ -173,7 +174,7 @@ def _stated(unit: Any) -> Stated:
     if unit is None or str(unit).strip() == "":
         return Stated()
     if isinstance(unit, str):
-        for format_name in (None, "fits", "vounit"):
+        for format_name in (None, "fits"):
             parsed = u.Unit(unit, format=format_name, parse_strict="silent")
             if not isinstance(parsed, u.UnrecognizedUnit):
                 return Stated(1.0, parsed)

@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
-from typing import TYPE_CHECKING, Any, get_args
+from types import UnionType
+from typing import TYPE_CHECKING, Annotated, Any, Union, get_args, get_origin
 
 import pydantic
 import yaml
@@ -86,18 +87,19 @@ def _known_keys(model: type[pydantic.BaseModel] | None, place: Iterable[Any]) ->
     for part in place:
         if isinstance(here, type) and issubclass(here, pydantic.BaseModel):
             field = here.model_fields.get(str(part))
-            if field is None:
-                return []
-            here = field.annotation
-        models = _models_in(here)
-        here = models[0] if models else None
+            here = field.annotation if field is not None else None
+        else:
+            # a dictionary of models or a list: the part is a name or a place in it
+            here = get_args(here)[-1] if get_args(here) else None
+        here = _without_none(here)
     return list(here.model_fields) if isinstance(here, type) and issubclass(here, pydantic.BaseModel) else []
 
 
-def _models_in(annotation: Any) -> list[type[pydantic.BaseModel]]:
-    if isinstance(annotation, type) and issubclass(annotation, pydantic.BaseModel):
-        return [annotation]
-    return [model for argument in get_args(annotation) for model in _models_in(argument)]
+def _without_none(annotation: Any) -> Any:
+    """What an optional or annotated type holds."""
+    while get_origin(annotation) in (Union, UnionType, Annotated):
+        annotation = next(each for each in get_args(annotation) if each is not type(None))
+    return annotation
 
 
 def check_whole(build: BuildFile) -> None:

@@ -78,7 +78,7 @@ def unit_named(text: str, kind: str | None = None) -> u.UnitBase:
 
 def _unit_advice(text: str) -> str | None:
     """For the first word in the text that is no unit: the nearest that is, or what comoving units are here."""
-    for word in re.findall(r"[A-Za-z_]+", text):
+    for word in re.findall(r"(?<![\d.])[A-Za-z_]+", text):
         try:
             u.Unit(word)
         except ValueError:

@@ -17,7 +17,11 @@ def read(build, size=17, fields=("t",)):
     chunks = list(open_source(build).chunks("gas", fields, size=size))
     assert max(map(len, chunks)) <= size
     position = np.concatenate([chunk.position for chunk in chunks])
-    return position, np.concatenate([chunk.mass for chunk in chunks]), np.concatenate([c.values.get("t", c.mass) for c in chunks])
+    return (
+        position,
+        np.concatenate([chunk.mass for chunk in chunks]),
+        np.concatenate([c.values.get("t", c.mass) for c in chunks]),
+    )
 
 
 def write_folder(folder, arrays=ARRAYS):

@@ -149,7 +149,9 @@ def test_a_glob_without_match_is_told_with_its_folder(tmp_path, describe):
     assert complaint(describe("snap.*.hdf5")) == f"no file matches snap.*.hdf5 in {tmp_path}"
 
 
-@pytest.mark.parametrize(("said", "expected"), [(5, "it is in 5 files, but only 1 found: 4 are missing"), (2, "1 is missing")])
+@pytest.mark.parametrize(
+    ("said", "expected"), [(5, "it is in 5 files, but only 1 found: 4 are missing"), (2, "1 is missing")]
+)
 def test_missing_parts_are_counted(write_part, describe, said, expected):
     write_part("part.0.hdf5", gas(), {"Header": HEADER | {"NumFilesPerSnapshot": said}})
     assert expected in complaint(describe())
@@ -217,7 +219,9 @@ def test_periodic_without_a_box_is_refused(write_part, describe):
     assert "snapshot.periodic: no box is known to repeat" in complaint(describe(more="  periodic: true"))
 
 
-@pytest.mark.parametrize(("table", "expected"), [([0.0], "entries 0 to 0: 1 is not there"), ([0.0, 0.0], "entry 1 of MassTable is 0")])
+@pytest.mark.parametrize(
+    ("table", "expected"), [([0.0], "entries 0 to 0: 1 is not there"), ([0.0, 0.0], "entry 1 of MassTable is 0")]
+)
 def test_a_mass_table_entry_that_holds_nothing_is_refused(write_part, describe, table, expected):
     write_part("part.0.hdf5", gas(), {"Header": HEADER | {"MassTable": table}})
     assert expected in complaint(describe(species="position: PartType0/Coordinates\n      mass: {table: 1}"))

@@ -132,7 +132,9 @@ def test_half_means_that_the_support_is_twice_as_wide(write_part, describe):
 
 def test_a_constant_mass_and_radius_are_given_to_every_particle(write_part, describe):
     write_part("part.0.hdf5", gas_datasets(VOCABULARIES["first"]), HEADER)
-    build = describe(species="position: PartType0/Coordinates\n      mass: 1.5e6 Msun\n      smoothing: {radius: 5 kpc}")
+    build = describe(
+        species="position: PartType0/Coordinates\n      mass: 1.5e6 Msun\n      smoothing: {radius: 5 kpc}"
+    )
     chunk = one_chunk(build)
     assert (chunk.mass.tolist(), chunk.radius.tolist()) == ([1.5e6, 1.5e6], [0.005, 0.005])
 
@@ -174,7 +176,11 @@ def test_a_part_without_the_species_has_no_particles_of_it(write_part, describe)
     [
         ({"Header": {"Redshift": 1.0, "Omega0": 0.3, "OmegaLambda": 0.7, "HubbleParam": 0.7}}, 1.0, 0.3),
         ({"Header": {"Time": 0.5, "Omega0": 0.3, "OmegaLambda": 0.7, "HubbleParam": 0.7}}, 1.0, 0.3),
-        ({"Header": {"Redshift": [1.0]}, "Parameters": {"Omega0": 0.3, "OmegaLambda": 0.7, "HubbleParam": 0.7}}, 1.0, 0.3),
+        (
+            {"Header": {"Redshift": [1.0]}, "Parameters": {"Omega0": 0.3, "OmegaLambda": 0.7, "HubbleParam": 0.7}},
+            1.0,
+            0.3,
+        ),
         ({"Cosmology": {"Scale-factor": [0.5], "Omega_m": [0.3], "Omega_lambda": [0.7], "h": [0.7]}}, 1.0, 0.3),
         ({"Cosmology": {"Cosmological run": [0], "h": [0.7]}, "Header": {"Time": 3.0}}, 0.0, None),
     ],

@@ -23,7 +23,9 @@ def source(run32):
 @pytest.fixture(scope="module")
 def gas(source) -> Chunk:
     chunks = list(source.chunks("gas", ["temperature"]))
-    joined = {name: np.concatenate([getattr(chunk, name) for chunk in chunks]) for name in ("position", "radius", "mass")}
+    joined = {
+        name: np.concatenate([getattr(chunk, name) for chunk in chunks]) for name in ("position", "radius", "mass")
+    }
     values = {"temperature": np.concatenate([chunk.values["temperature"] for chunk in chunks])}
     return Chunk(0, joined["position"], joined["radius"], joined["mass"], values)
 

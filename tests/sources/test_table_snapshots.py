@@ -145,9 +145,7 @@ def test_a_flat_chart_keeps_positions_in_its_unit(tmp_path, describe):
 
 def test_a_flat_chart_has_neither_box_nor_cosmology(tmp_path, describe):
     Table({"ra": [1.0], "dec": [2.0]}).write(tmp_path / "a.csv")
-    facts = open_source(
-        describe("a.csv", "position: [ra, dec]", view="{unit: deg, centre: [1, 1], width: 2}")
-    ).facts
+    facts = open_source(describe("a.csv", "position: [ra, dec]", view="{unit: deg, centre: [1, 1], width: 2}")).facts
     assert (facts.box, facts.redshift, facts.cosmology, facts.periodic) == (None, None, None, False)
 
 

@@ -184,5 +184,9 @@ def _seen(reader: Reader, name: str, description: str) -> Seen:
     finite = [sample[np.isfinite(sample)] for sample in samples]
     finite = [sample for sample in finite if sample.size]
     ends = (float(min(s.min() for s in finite)), float(max(s.max() for s in finite))) if finite else None
-    dtype = str(samples[0].dtype) if samples else {"S": "text", "U": "text", "O": "text"}.get(look.dtype_kind, "other")
+    dtype = (
+        samples[0].dtype.newbyteorder("=").name
+        if samples
+        else {"S": "text", "U": "text", "O": "text"}.get(look.dtype_kind, "other")
+    )
     return Seen(name, sum(look.rows), look.width, dtype, look.stated, ends, " ".join(description.split()))

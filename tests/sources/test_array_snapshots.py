@@ -130,7 +130,7 @@ def test_a_truncated_file_is_refused(tmp_path, describe, name):
     write_folder(tmp_path / "a")
     path = tmp_path / name
     path.write_bytes(path.read_bytes()[:-300])
-    with pytest.raises(InputError, match="not a whole .np[yz] file"):
+    with pytest.raises(InputError, match=r"not a whole .np[yz] file"):
         read(describe(name.split("/")[0], SPECIES))
 
 
@@ -139,17 +139,17 @@ def test_a_flipped_byte_in_an_npz_is_found(tmp_path, describe):
     data = bytearray((tmp_path / "a.npz").read_bytes())
     data[300_000] ^= 1
     (tmp_path / "a.npz").write_bytes(data)
-    with pytest.raises(InputError, match="xyz.npy is damaged"):
+    with pytest.raises(InputError, match=r"xyz.npy is damaged"):
         read(describe("a.npz", "position: xyz\n      mass: m"), size=20000, fields=())
 
 
 def test_pickled_objects_are_never_loaded(tmp_path, describe):
     write_folder(tmp_path / "a", {"xyz": np.array([{}], dtype=object)})
-    with pytest.raises(InputError, match="not a whole .npy file of numbers"):
+    with pytest.raises(InputError, match=r"not a whole .npy file of numbers"):
         open_source(describe("a", SPECIES))
 
 
 def test_an_empty_folder_is_refused(tmp_path, describe):
     (tmp_path / "a").mkdir()
-    with pytest.raises(InputError, match="no .npy file is in this folder"):
+    with pytest.raises(InputError, match=r"no .npy file is in this folder"):
         open_source(describe("a", SPECIES))

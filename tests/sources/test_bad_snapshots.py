@@ -5,7 +5,7 @@ from __future__ import annotations
 import h5py
 import numpy as np
 import pytest
-from conftest import KPC_CM, MSUN_G, first_words
+from unit_words import KPC_CM, MSUN_G, first_words
 
 from tilemap.errors import InputError
 from tilemap.sources import open_source

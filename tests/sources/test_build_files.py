@@ -225,7 +225,7 @@ def test_further_mistakes_are_counted():
 
 
 def test_a_missing_build_file_is_named(tmp_path):
-    with pytest.raises(InputError, match="nowhere.yaml is not there"):
+    with pytest.raises(InputError, match=r"nowhere.yaml is not there"):
         load(tmp_path / "nowhere.yaml")
 
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from conftest import KPC_CM, MSUN_G, first_words, second_words, third_words
+from unit_words import KPC_CM, MSUN_G, first_words, second_words, third_words
 
 from tilemap.errors import InputError
 from tilemap.sources import open_source

@@ -9,7 +9,7 @@ import h5py
 import numpy as np
 import pytest
 from astropy.table import Table
-from conftest import KPC_CM, MSUN_G, first_words, third_words
+from unit_words import KPC_CM, MSUN_G, first_words, third_words
 
 from tilemap.buildfile import loads
 from tilemap.errors import InputError

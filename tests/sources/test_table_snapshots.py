@@ -151,7 +151,7 @@ def test_a_flat_chart_has_neither_box_nor_cosmology(tmp_path, describe):
 
 def test_a_file_of_unknown_kind_asks_for_it(tmp_path, describe):
     (tmp_path / "a.dat").write_text("x")
-    with pytest.raises(InputError, match="a.dat: no kind of file is known for this suffix"):
+    with pytest.raises(InputError, match=r"a.dat: no kind of file is known for this suffix"):
         open_source(describe("a.dat", SPECIES))
 
 

@@ -21,7 +21,6 @@ KINDS: dict[str, tuple[u.UnitBase, str]] = {
     "length": (u.Mpc, "kpc"),
     "mass": (u.Msun, "Msun"),
     "angle": (u.deg, "deg"),
-    "temperature": (u.K, "K"),
     "specific energy": (u.km**2 / u.s**2, "km2/s2"),
 }
 

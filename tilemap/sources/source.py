@@ -142,8 +142,8 @@ class Source:
         """
         plan = self._plan_of(species)
         columns = {name: self._field_of(plan, species, name) for name in fields if name not in ("mass", "count")}
-        read = [*plan.position, *(each for each in (plan.mass, plan.radius, *columns.values()) if _is_read(each))]
-        wanted = list(dict.fromkeys((each.dataset, each.column) for each in read if isinstance(each, Column)))
+        roles = (*plan.position, plan.mass, plan.radius, *columns.values())
+        wanted = list(dict.fromkeys((each.dataset, each.column) for each in roles if isinstance(each, Column)))
         start = 0
         for part, rows in enumerate(plan.rows):
             if rows == 0:
@@ -208,10 +208,6 @@ class Source:
             f"{file}: {names}: {count} of {start} {species} particles have {what} ({where_text}, counted from 0): "
             "mend or leave out these rows"
         )
-
-
-def _is_read(column: Column | float | None) -> bool:
-    return isinstance(column, Column)
 
 
 def _make_chunk(start: int, stored: dict[Wanted, np.ndarray], plan: Plan, columns: dict[str, Column]) -> Chunk:

@@ -21,6 +21,9 @@ TOP_CODE = 65535
 ROUNDING_STEPS = 0.52
 """The furthest, in steps, that an encoded value may lie from its code: half a step, and what arithmetic adds."""
 
+FLOAT_NOISE = 1e-6
+"""Relative: what a few float32 additions and a division before the encoding may do, some 5 roundings of 6e-8, twice over."""
+
 SMALLEST_STEP_DEX = 1e-5
 """Below this the float32 logarithm would no longer be good to 0.02 of a step."""
 
@@ -286,6 +289,8 @@ def _table(coding: Coding) -> NDArray[np.float32]:
 def _bounds(coding: Coding) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
     steps = np.arange(-1.0, TOP_CODE)
     low, high = coding._exact(steps - ROUNDING_STEPS), coding._exact(steps + ROUNDING_STEPS)
+    with np.errstate(invalid="ignore"):
+        low, high = low - FLOAT_NOISE * np.abs(low), high + FLOAT_NOISE * np.abs(high)
     low[0] = 0.0
     high[0] = high[0] if isinstance(coding, LogCoding) else 0.0
     if isinstance(coding, LinearCoding):

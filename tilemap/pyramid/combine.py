@@ -1,0 +1,100 @@
+"""Tiles of some slabs in, new pixels out: sums added up, means weighted."""
+
+from __future__ import annotations
+
+import math
+import os
+from collections.abc import Iterator
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
+from itertools import islice
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy import sparse
+
+from tilemap.pyramid.coding import Coding
+from tilemap.pyramid.grid import TILE
+from tilemap.pyramid.reader import ArrayReader
+from tilemap.pyramid.resample import Canvas, tiles_used
+
+LEAST_WEIGHT = 1e-200
+"""Stands in for a weight that was too low to be written: it counts only where nothing heavier lies in the pixel."""
+
+TILES_AT_ONCE = 16
+"""Decoded and waiting to be added: 16 MiB of values, and as much of weights."""
+
+Tile = tuple[int, int, int]
+
+
+@dataclass(frozen=True)
+class Coded:
+    """One array with the coding of its sheet."""
+
+    reader: ArrayReader
+    coding: Coding
+
+
+def combine(
+    sheet: Coded,
+    weight: Coded | None,
+    slabs: tuple[int, ...],
+    rows: sparse.csc_matrix,
+    columns: sparse.csc_matrix,
+) -> NDArray[np.float32]:
+    """New pixels of several slabs together.
+
+    Parameters
+    ----------
+    sheet : Coded
+    weight : Coded, optional
+        Of the same level, for a mean; a sum has none.
+    slabs : tuple of int
+    rows, columns : sparse float64 (new, old)
+        How much of each old pixel a new one takes, as `resample.overlaps` gives it.
+
+    Returns
+    -------
+    float32 (new rows, new columns)
+        For a sum, the slabs' averages over the new pixels, added; for a mean, the average of weight times value over
+        that of the weight. NaN where nothing is, but 0 for a sum in log coding.
+    """
+    # What decodes to NaN is not there; a sum in log coding is there everywhere, if only as zero.
+    everywhere = not math.isnan(sheet.coding.nothing)
+    upper, lower = Canvas(rows, columns), Canvas(rows, columns)
+    places = _places(sheet.reader, slabs, rows, columns)
+    with ThreadPoolExecutor(os.cpu_count()) as pool:
+        while batch := list(islice(places, TILES_AT_ONCE)):
+            for (_, row, column), values, counts in pool.map(lambda place: _take(sheet, weight, place), batch):
+                if everywhere:
+                    upper.add(values, row * TILE, column * TILE)
+                else:
+                    upper.add(np.where(counts > 0, values, 0.0) * counts, row * TILE, column * TILE)
+                    lower.add(counts, row * TILE, column * TILE)
+    if everywhere:
+        return upper.values.astype(np.float32)
+    filled = np.full_like(upper.values, np.nan)
+    divisor = lower.values if weight is not None else np.ones_like(lower.values)
+    return np.divide(upper.values, divisor, out=filled, where=lower.values > 0).astype(np.float32)
+
+
+def _take(sheet: Coded, weight: Coded | None, place: Tile) -> tuple[Tile, NDArray[Any], NDArray[Any]]:
+    """A tile's values, and how much each counts: its weight, or 1 in a sum; 0 where nothing is."""
+    values = sheet.coding.decode(sheet.reader.codes(*place))
+    there = ~np.isnan(values)
+    if weight is None:
+        return place, values, there
+    heavy = np.nan_to_num(weight.coding.decode(weight.reader.codes(*place)).astype(np.float64), nan=0.0)
+    return place, values, np.where(there, np.maximum(heavy, LEAST_WEIGHT), 0.0)
+
+
+def _places(
+    reader: ArrayReader, slabs: tuple[int, ...], rows: sparse.csc_matrix, columns: sparse.csc_matrix
+) -> Iterator[Tile]:
+    """The tiles that are needed; those that are empty add nothing and are left out."""
+    for row in tiles_used(rows, TILE):
+        for column in tiles_used(columns, TILE):
+            for slab in slabs:
+                if reader.locate(slab, row, column) is not None:
+                    yield slab, row, column

@@ -1,0 +1,98 @@
+"""Finished float values of one sheet in, coded tiles in shards out, in whatever order they come."""
+
+from __future__ import annotations
+
+import threading
+from pathlib import Path
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tilemap.pyramid.coding import Coding
+from tilemap.pyramid.grid import TILE, level_shapes, shard_shape, tile_grid
+from tilemap.pyramid.store import create_array, create_group, pack_tile, write_shard
+
+WHOLE = -1
+"""In place of a slab's number: the stack of one that holds all slabs together."""
+
+
+class SheetWriter:
+    """The arrays of one sheet, every level, slabs and whole.
+
+    Safe to call from several threads. A shard is written when its last tile has come; until then its packed tiles are
+    kept, so pieces that lie together should come together.
+
+    Parameters
+    ----------
+    folder : Path
+        The sheet's folder; made here.
+    shape : (rows, columns) at level 0
+    slabs : int
+    coding : Coding
+    """
+
+    def __init__(self, folder: Path, shape: tuple[int, int], slabs: int, coding: Coding) -> None:
+        self.folder = folder
+        self.slabs = slabs
+        self.coding = coding
+        self.shapes = level_shapes(*shape)
+        self._lock = threading.Lock()
+        self._waiting: dict[tuple[int, int, int, int], dict[tuple[int, int], bytes | None]] = {}
+        self._describe({})
+
+    def put(self, level: int, slab: int, corner: tuple[int, int], values: NDArray[np.float32]) -> None:
+        """Take in a piece of an image: whole tiles, or what is left of them at the right and lower edge.
+
+        Parameters
+        ----------
+        level : int
+        slab : int, or WHOLE
+        corner : (row, column) in tiles
+        values : float32 (rows, columns), in the sheet's unit
+        """
+        rows, columns = values.shape
+        for i in range(-(-rows // TILE)):
+            for j in range(-(-columns // TILE)):
+                piece = values[i * TILE : (i + 1) * TILE, j * TILE : (j + 1) * TILE]
+                codes = self.coding.encode(piece)
+                if codes.shape != (TILE, TILE):
+                    tile = np.zeros((TILE, TILE), dtype=np.uint16)
+                    tile[: codes.shape[0], : codes.shape[1]] = codes
+                    codes = tile
+                self._add(level, slab, corner[0] + i, corner[1] + j, pack_tile(codes))
+
+    def put_nothing(self, level: int, slab: int, corner: tuple[int, int], shape: tuple[int, int]) -> None:
+        """The same for a piece of (rows, columns) pixels in which there is nothing."""
+        for i in range(-(-shape[0] // TILE)):
+            for j in range(-(-shape[1] // TILE)):
+                self._add(level, slab, corner[0] + i, corner[1] + j, None)
+
+    def _add(self, level: int, slab: int, row: int, column: int, tile: bytes | None) -> None:
+        across = tuple(side // TILE for side in shard_shape(self.shapes[level]))
+        shard = (level, slab, row // across[0], column // across[1])
+        grid = tile_grid(self.shapes[level])
+        expected = min(across[0], grid[0] - shard[2] * across[0]) * min(across[1], grid[1] - shard[3] * across[1])
+        with self._lock:
+            tiles = self._waiting.setdefault(shard, {})
+            tiles[row % across[0], column % across[1]] = tile
+            if len(tiles) < expected:
+                return
+            del self._waiting[shard]
+        stack, deep = (self.folder / "whole", 0) if slab == WHOLE and self.slabs > 1 else (self.folder, max(slab, 0))
+        write_shard(stack / str(level), (deep, shard[2], shard[3]), tiles, (across[0], across[1]))
+
+    def close(self, attributes: dict) -> None:
+        """Give the sheet its description; every tile must have come."""
+        if self._waiting:
+            level, slab, row, column = next(iter(self._waiting))
+            raise RuntimeError(
+                f"{self.folder}: the shard {row}, {column} of level {level}, slab {slab} is not complete"
+            )
+        self._describe(attributes)
+
+    def _describe(self, attributes: dict) -> None:
+        stacks = [(self.folder, self.slabs)] + ([(self.folder / "whole", 1)] if self.slabs > 1 else [])
+        for stack, deep in stacks:
+            create_group(stack, attributes)
+            for level, size in enumerate(self.shapes):
+                create_array(stack / str(level), (deep, *size), attributes)

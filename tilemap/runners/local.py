@@ -1,0 +1,54 @@
+"""The local runner: pieces of work on threads of this machine, results in the order of the pieces.
+
+The heavy rooms (routing, drawing, coding, packing) release Python's lock, so threads are enough and share memory.
+"""
+
+from __future__ import annotations
+
+import os
+from collections import deque
+from collections.abc import Callable, Iterable, Iterator
+from concurrent.futures import Future, ThreadPoolExecutor
+from types import TracebackType
+from typing import TypeVar
+
+Piece = TypeVar("Piece")
+Result = TypeVar("Result")
+
+
+def usable_cores() -> int:
+    """Cores that this process may use."""
+    return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
+
+
+class LocalRunner:
+    """Runs work on `workers` threads (default: one a core). Use as a context; leaving it waits for what is running."""
+
+    def __init__(self, workers: int | None = None) -> None:
+        self.workers = workers or usable_cores()
+        self._pool = ThreadPoolExecutor(self.workers)
+
+    def __enter__(self) -> LocalRunner:
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        self._pool.shutdown(wait=True, cancel_futures=True)
+
+    def map(self, work: Callable[[Piece], Result], pieces: Iterable[Piece]) -> Iterator[Result]:
+        """`work` on every piece; results in order. At most one piece more than there are workers is in memory at once.
+
+        The first error stops taking pieces, and is raised here.
+        """
+        waiting: deque[Future[Result]] = deque()
+        try:
+            for piece in pieces:
+                waiting.append(self._pool.submit(work, piece))
+                if len(waiting) > self.workers:
+                    yield waiting.popleft().result()
+            while waiting:
+                yield waiting.popleft().result()
+        finally:
+            for future in waiting:
+                future.cancel()

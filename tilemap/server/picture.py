@@ -44,7 +44,9 @@ def picture_png(opened: Opened) -> bytes:
 def paint(codes: np.ndarray, sheet: dict) -> np.ndarray:
     """Colours of coded values: uint8 (rows, columns, 3) for uint16 (rows, columns)."""
     scaled = sheet["low"] + sheet["step"] * (codes.astype(np.float64) - 1)
-    low, high = sheet["percentiles"]["5"], sheet["percentiles"]["99.9"]
+    low, high = (sheet["percentiles"].get(rank) for rank in ("5", "99.9"))
+    if low is None or high is None:  # a sheet with nothing on it has none
+        return np.full((*codes.shape, 3), GROUND, dtype=np.uint8)
     if sheet["coding"] == "log":
         low, high = np.log10([low, high])
     brightness = np.clip((scaled - low) / ((high - low) or 1.0), 0.0, 1.0)

@@ -19,7 +19,7 @@ from functools import partial
 from pathlib import Path
 from typing import Any
 
-from tilemap.errors import InputError
+from tilemap.errors import InputError, NotSoError
 from tilemap.server.app import make_app
 from tilemap.server.shelf import Shelf
 
@@ -79,16 +79,19 @@ def serve(
     server.on_startup(lambda: threading.Thread(target=_announce, args=(host, port, line, say), daemon=True).start())
     try:
         server.serve(target_loader=partial(load, paths), wrap_loader=False)
-    except SystemExit:
-        # Ctrl-C reaches the worker too, which granian then takes for one that failed.
-        if not received:
-            raise
+    except SystemExit as end:
+        raise NotSoError("the server ended by itself; start it again") from end
     if signal.SIGINT in received:
         raise KeyboardInterrupt
 
 
 def load(paths: Iterable[str]) -> Callable[..., Iterable[bytes]]:
-    """The application, made inside granian's worker process, which must not outlive its parent."""
+    """The application, made inside granian's worker process, which must not outlive its parent.
+
+    A Ctrl-C reaches both processes, and the parent then ends the worker; two signals at once leave granian's worker
+    waiting for itself (seen with granian 2.8), so this one is kept from it.
+    """
+    signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
     if sys.platform == "linux":
         ctypes.CDLL(None).prctl(DIE_WITH_PARENT, signal.SIGTERM)
     return make_app(paths)

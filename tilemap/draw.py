@@ -21,7 +21,6 @@ from tilemap.project.scatter import Buckets, Plan
 from tilemap.project.smoothing import neighbour_radii
 from tilemap.project.stamps import stamps_for
 from tilemap.project.vcycle import Cycle
-from tilemap.pyramid.coding import Coding
 from tilemap.pyramid.grid import TILE
 from tilemap.pyramid.reduce import halve
 from tilemap.pyramid.writer import WHOLE, SheetWriter

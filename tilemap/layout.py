@@ -28,7 +28,7 @@ def make_camera(build: BuildFile, facts: Facts) -> Camera:
     box = None if facts.box is None else np.asarray(facts.box, dtype=np.float64)[list(axes)]
     if box is None and (view.centre is None or view.width is None):
         raise InputError(f"{where}: the files name no box, so centre and width must be given")
-    centre = np.asarray(view.centre, dtype=np.float64)[list(axes)] if view.centre is not None else box / 2  # type: ignore[operator]
+    centre = np.asarray(view.centre)[list(axes)] if view.centre is not None else np.asarray(box) / 2
     width = view.width if view.width is not None else float(box[0])  # type: ignore[index]
     height = (
         view.height if view.height is not None else float(box[1]) if box is not None and view.width is None else width

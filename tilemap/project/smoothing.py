@@ -58,7 +58,7 @@ def neighbour_radii(
         size = np.maximum(position.max(axis=0) - low, 1e-300)
     cells = _Cells(position, low, size, periodic=box is not None)
     radii = np.empty(len(position))
-    for own, distance in runner.map(lambda cell: cells.search(cell, neighbours), cells.occupied):
+    for own, distance in runner.map(lambda cell: cells.search(int(cell), neighbours), cells.occupied):
         radii[own] = distance
     smallest = radii[radii > 0].min(initial=np.inf)
     if not np.isfinite(smallest):

@@ -8,6 +8,7 @@ around its centre.
 from __future__ import annotations
 
 import math
+from typing import Any
 
 import numpy as np
 from numba import njit
@@ -22,7 +23,7 @@ UNIT_SUM_PX = 256.0
 
 # fastmath lets the compiler reorder sums and fuse multiply-adds, without which rows do not vectorise; infinities
 # and NaN are refused by the sources, so their rules are not needed here.
-_FAST = {"nogil": True, "cache": True, "fastmath": True, "error_model": "numpy"}
+_FAST: dict[str, Any] = {"nogil": True, "cache": True, "fastmath": True, "error_model": "numpy"}
 assert FIRST_POWER == 3 and TERMS == 9, "the loops below are written out for this polynomial"
 
 
@@ -60,7 +61,7 @@ def _row_drawer(width: int):
         top = int(math.floor(y - reach))
         bottom = int(math.floor(y + reach))
         dx0 = np.float32(left) + np.float32(0.5) - x
-        total = 0.0
+        total = np.float64(0.0)
         for row in range(top, bottom + 1):
             dy = np.float32(row) + np.float32(0.5) - y
             u0 = np.float32(1.0) - dy * dy * inverse
@@ -166,7 +167,7 @@ def _wide_rows(image, channels, x, y, r, first, second, q, draw):
     if draw:
         top, bottom = max(top, -MARGIN), min(bottom, image.shape[1] - MARGIN - 1)
         left, right = max(left, -MARGIN), min(right, image.shape[2] - MARGIN - 1)
-    total = 0.0
+    total = np.float64(0.0)
     for row in range(top, bottom + 1):
         dy = np.float32(row) + np.float32(0.5) - y
         u0 = np.float32(1.0) - dy * dy * inverse

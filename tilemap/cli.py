@@ -7,6 +7,7 @@ commands that need them, so that ``tilemap --help`` answers at once.
 from __future__ import annotations
 
 import errno
+import json
 import os
 import re
 import sys
@@ -114,7 +115,8 @@ def verify(atlas: Path) -> int:
     """Check an atlas: every checksum, every tile, every level against the one below; exit 1 if anything is off."""
     from tilemap.pyramid.verify import verify as verified
 
-    findings = [str(finding) for finding in verified(atlas)]
+    with shown(sys.stderr) as report:
+        findings = [str(finding) for finding in verified(atlas, report)]
     for finding in findings:
         click.echo(finding)
     if findings:
@@ -156,10 +158,15 @@ def demo(folder: Path, no_serve: bool, port: int, scale: float) -> None:
 
     What is there already and whole is not made again.
     """
-    from tilemap.demo.run import prepare
+    from tilemap.demo import make
 
+    atlas = folder / "marram.atlas"
     with shown(sys.stderr) as report:
-        atlas = prepare(folder, scale, report)
+        build_file = make(folder, progress=report, scale=scale)
+        if not _is_built(atlas, build_file):
+            from tilemap.build_atlas import build_atlas
+
+            build_atlas(build_file, atlas, progress=report)
     click.echo(f"the atlas is {atlas}")
     if not no_serve:
         # A process of its own: the server forks, which is not safe where the engine's threads have run, and what
@@ -167,6 +174,19 @@ def demo(folder: Path, no_serve: bool, port: int, scale: float) -> None:
         sys.stdout.flush()
         arguments = ["-m", "tilemap", "serve", os.fspath(atlas), "--port", str(port)]
         os.execv(sys.executable, [sys.executable, *arguments])
+
+
+def _is_built(atlas: Path, build_file: Path) -> bool:
+    """Whether an atlas was made from this build file as it stands, after the snapshot and objects beside it."""
+    try:
+        described = json.loads((atlas / "atlas.json").read_bytes())
+        published = (atlas / "atlas.json").stat().st_mtime_ns
+        inputs = [*build_file.parent.glob("*.ecsv"), *(build_file.parent / "snapshot").iterdir()]
+        newest = max(path.stat().st_mtime_ns for path in inputs)
+        same_text = described["provenance"]["build_file"] == build_file.read_text(encoding="utf-8")
+    except (OSError, ValueError, KeyError):
+        return False
+    return same_text and newest <= published
 
 
 def byte_count(text: str) -> int:

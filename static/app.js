@@ -1,0 +1,353 @@
+// The frame: puts map, edges, markers and reading together. In: the atlas beside the document and the link in its address.
+// Out: a view that a hand can move, and a link that brings it back.
+
+import { Atlas, Layer } from './atlas.js';
+import { CensusEdge } from './census.js';
+import { DepthEdge } from './depth.js';
+import { make, words } from './dom.js';
+import { folding } from './folding.js';
+import { listen } from './gestures.js';
+import { keyboard, keysNote } from './keys.js';
+import { read, settled, write } from './link.js';
+import { MapSurface } from './map.js';
+import { Markers } from './markers.js';
+import { Motion } from './motion.js';
+import { Catalogue } from './objects.js';
+import { Reading } from './reading.js';
+import { ScaleEdge } from './scale.js';
+import { State } from './state.js';
+import { Status } from './status.js';
+import { Tiles } from './tiles.js';
+import { ToneEdge } from './tone.js';
+import { fixed } from './units.js';
+import { Limits, View } from './view.js';
+import { say } from './words.js';
+
+/** @param {string} id */
+const at = (id) => /** @type {HTMLElement} */ (document.getElementById(id));
+
+export class Frame {
+  /** @param {Atlas} atlas @param {Status} status */
+  constructor(atlas, status) {
+    this.atlas = atlas;
+    this.status = status;
+    this.hand = at('hand');
+    this.frameAsked = 0;
+    this.timers = { tiles: 0, counts: 0, link: 0 };
+    this.asked = { tiles: 0, counts: 0 };
+    /** @type {Map<string, Layer>} */
+    this.layers = new Map();
+    this.state = new State(atlas, (changed) => this.stateChanged(changed));
+    this.tiles = new Tiles({
+      arrived: (tile) => this.tileArrived(tile),
+      trouble: (kind) => status.say(say(`trouble_${kind}`), { kind: 'server', stay: kind === 'server' ? 0 : 8000 }),
+      fine: () => status.kind === 'server' && status.say(say('trouble_back'), { kind: 'server', stay: 2500 }),
+      gone: () => this.reopen(),
+    });
+    this.map = new MapSurface(/** @type {HTMLCanvasElement} */ (at('ground')), this.tiles, () => this.wake());
+    this.measureMap();
+    const view = new View(0, 0, 1, this.size.w, this.size.h);
+    const limits = new Limits(atlas.bounds, atlas.pixel);
+    this.motion = new Motion(limits.filled(view), limits, () => this.moved());
+    this.markers = new Markers(/** @type {HTMLCanvasElement} */ (at('marks')), at('note'), this.state, {
+      go: (found) => this.goTo(found),
+      wake: () => this.wake(),
+    });
+    this.tone = new ToneEdge(at('tone'), this.state);
+    this.scale = new ScaleEdge(at('scale'), this.state, () => this.motion);
+    this.depth = new DepthEdge(at('depth'), at('depth-corner'), this.state);
+    this.census = new CensusEdge(at('census'), at('census-corner'), this.state);
+    this.reading = new Reading(at('reading'), this.state, this.map, (value) => this.tone.setReading(value));
+    this.catalogue = new Catalogue(this.state, {
+      objects: (list) => this.markers.setList(list),
+      census: (counts) => this.census.setCounts(counts),
+    });
+    this.sheets = words(say('sheets'), (sheetName) => this.state.set({ sheetName }));
+    this.sheets.root.classList.add('column');
+    at('sheets').append(this.sheets.root);
+    this.title();
+    listen(this.hand, () => this.motion, {
+      tap: (x, y, touch) => this.tapped(x, y, touch),
+      hover: (x, y) => this.hovered(x, y),
+      begin: () => this.hand.classList.add('moving'),
+      settled: () => this.hand.classList.remove('moving'),
+    });
+    this.hand.setAttribute('aria-label', say('map'));
+    keyboard(this);
+    folding(this.hand);
+    addEventListener('hashchange', () => this.followLink(true));
+    new ResizeObserver(() => this.resized()).observe(at('map'));
+    this.resized();
+    this.followLink(false);
+    this.stateChanged(new Set(['sheetName']));
+  }
+
+  title() {
+    const { atlas, state } = this;
+    document.title = atlas.title || say('untitled');
+    const { redshift, age_gyr: age } = state.epoch;
+    const facts = [];
+    if (redshift !== null && redshift !== undefined && atlas.view.coordinates === 'comoving') facts.push(say('epoch', { z: fixed(redshift, 2) }));
+    if (age) facts.push(say('age', { age: fixed(age, 1) }));
+    at('title').replaceChildren(make('h1', { title: atlas.json.about ?? '' }, atlas.title || say('untitled')), make('div.dim', {}, facts.join(' · ')));
+    this.copy = make('button.word.act', { type: 'button', click: () => this.copyLink() }, say('link_copy'));
+    const keys = make('button.word.act', { type: 'button', click: () => this.showKeys() }, say('keys'));
+    at('links').replaceChildren(this.copy, keys);
+  }
+
+  // What is shown ------------------------------------------------------------------------------------------------
+
+  /** @returns {Layer} the layer that the state asks for */
+  get layer() {
+    const { state, atlas } = this;
+    const layer = new Layer(atlas, state.epoch, state.sheet, state.slabs);
+    if (!this.layers.has(layer.id)) this.layers.set(layer.id, layer);
+    return this.layers.get(layer.id);
+  }
+
+  /** @param {Set<string>} changed */
+  stateChanged(changed) {
+    if (!this.motion || !this.sheets) return;
+    const { state } = this;
+    this.map.show(this.layer, state.tone);
+    this.sheets.update(state.epoch.sheets.map((s, i) => ({ value: s.name, text: s.title || s.name, title: say('sheet_key', { n: i + 1 }) })), state.sheet.name);
+    if (changed.has('object')) this.seekObject();
+    this.tone.draw();
+    this.depth.draw();
+    this.census.draw();
+    this.scale.draw();
+    this.askTiles(0);
+    this.catalogue.ask(this.motion.view, 150);
+    this.linkSoon();
+    this.wake();
+  }
+
+  moved() {
+    this.askTiles(60);
+    this.askCounts(120);
+    this.catalogue.ask(this.motion.view, 250);
+    this.linkSoon();
+    this.wake();
+  }
+
+  /** @param {import('./tiles.js').Tile} tile */
+  tileArrived(tile) {
+    this.map.arrived(tile);
+    this.askCounts(80);
+  }
+
+  wake() {
+    if (!this.frameAsked) this.frameAsked = requestAnimationFrame((now) => this.draw(now));
+  }
+
+  /** One frame. @param {number} now ms */
+  draw(now) {
+    this.frameAsked = 0;
+    this.motion.step(now);
+    const { view } = this.motion;
+    const more = this.map.render(view, now);
+    this.markers.draw(view);
+    if (this.drawnView !== view) this.scale.draw();
+    this.drawnView = view;
+    this.reading.update(view);
+    const busy = more || this.motion.moving || this.map.recolouring || this.tiles.pending > 0;
+    this.hand.setAttribute('aria-busy', String(busy));
+    if (more || this.motion.moving) this.wake();
+  }
+
+  /** Asks for tiles now, or at most every so often while things move. @param {number} every ms */
+  askTiles(every) {
+    if (this.timers.tiles && every) return;
+    clearTimeout(this.timers.tiles);
+    const wait = Math.max(this.asked.tiles + every - performance.now(), 0);
+    const ask = () => {
+      this.timers.tiles = 0;
+      this.asked.tiles = performance.now();
+      this.map.ask(this.motion.view);
+      this.wake();
+    };
+    if (wait <= 0) ask();
+    else this.timers.tiles = window.setTimeout(ask, wait);
+  }
+
+  /** Counts the values in view, at most every so often. @param {number} every ms */
+  askCounts(every) {
+    if (this.timers.counts) return;
+    this.timers.counts = window.setTimeout(async () => {
+      const { front } = this.map;
+      if (front) {
+        const parts = this.map.parts(this.motion.view);
+        const pixels = parts.reduce((sum, p) => sum + (p.x1 - p.x0) * (p.y1 - p.y0), 0);
+        const stride = Math.max(Math.round(Math.sqrt(pixels / 4e5)), 1);
+        const { counts } = await this.tiles.count(parts, { stride, ...this.tone.binning(front.layer.coding) });
+        this.tone.setCounts(counts);
+      }
+      this.timers.counts = 0;
+    }, every);
+  }
+
+  measureMap() {
+    const box = at('map').getBoundingClientRect();
+    const ratio = devicePixelRatio;
+    const [dw, dh] = [Math.max(Math.round(box.width * ratio), 16), Math.max(Math.round(box.height * ratio), 16)];
+    this.size = { w: dw / ratio, h: dh / ratio, dw, dh, ratio };
+  }
+
+  resized() {
+    this.measureMap();
+    const { w, h, dw, dh, ratio } = this.size;
+    this.map.resize(dw, dh, ratio);
+    this.markers.resize(dw, dh, ratio);
+    for (const canvas of [this.map.canvas, this.markers.canvas]) Object.assign(canvas.style, { width: `${w}px`, height: `${h}px` });
+    const { view } = this.motion;
+    this.motion.view = this.motion.limits.clamp(view.resized(w, h));
+    this.moved();
+    this.draw(performance.now());
+  }
+
+  // Hands --------------------------------------------------------------------------------------------------------
+
+  /** @param {number} x @param {number} y @param {boolean} touch */
+  tapped(x, y, touch) {
+    this.hand.focus({ preventScroll: true });
+    if (this.markers.tap(x, y)) return;
+    if (touch) {
+      this.reading.hover(null, null);
+      this.reading.place = this.motion.view.invert(x, y);
+    }
+    this.wake();
+  }
+
+  /** @param {number|null} x @param {number|null} y */
+  hovered(x, y) {
+    this.reading.hover(x, y);
+    this.hand.classList.toggle('over', this.markers.hover(x, y));
+    this.wake();
+  }
+
+  /** A smooth step of the keyboard. @param {number} dx CSS pixels @param {number} dy */
+  glide(dx, dy) {
+    const { motion } = this;
+    if (motion.calm.matches) return motion.drag(dx, dy);
+    motion.zoom = null;
+    motion.flight = null;
+    // A fling of this speed covers the step: its way is speed times time constant.
+    motion.fling(motion.velocity[0] + dx / 300, motion.velocity[1] + dy / 300);
+  }
+
+  /** @param {import('./objects.js').Found} found */
+  goTo(found) {
+    const { motion, atlas } = this;
+    const width = Math.max((found.size ?? 0) * 9, atlas.pixel * 60);
+    motion.fly(motion.view.with({ u: found.u, v: found.v, width: Math.min(width, motion.view.width) }));
+  }
+
+  putAway() {
+    this.keysShown = false;
+    this.state.set({ object: null });
+    this.markers.describe();
+    this.hand.focus({ preventScroll: true });
+  }
+
+  showKeys() {
+    const note = at('note');
+    this.keysShown = !this.keysShown;
+    if (!this.keysShown) return this.markers.describe();
+    this.markers.choose(null);
+    note.hidden = false;
+    note.style.transform = 'translateY(12px)';
+    note.replaceChildren(...keysNote(() => this.putAway()));
+  }
+
+  // Links --------------------------------------------------------------------------------------------------------
+
+  /** An object that the link names but that is not among the heaviest in view is looked for. */
+  async seekObject() {
+    const { object } = this.state;
+    this.keysShown = false;
+    if (this.markers.choose(object) || object === null || !this.state.epoch.catalogue) return;
+    const found = await this.catalogue.find(this.motion.view.bounds, (o) => Markers.name(o) === object).catch(() => null);
+    if (this.state.object !== object) return;
+    if (found) this.markers.adopt(found);
+    else this.status.say(say('trouble_object', { name: object }));
+  }
+
+  linkSoon() {
+    clearTimeout(this.timers.link);
+    this.timers.link = window.setTimeout(() => this.writeLink(), 250);
+  }
+
+  writeLink() {
+    if (this.motion.moving || this.hand.classList.contains('moving')) return this.linkSoon();
+    const { view } = this.motion;
+    const snapped = this.motion.limits.clamp(view.with(settled(view)));
+    if (!snapped.equals(view)) {
+      // The view becomes exactly what the link says; the difference is below a hundredth of a pixel.
+      this.motion.view = snapped;
+      this.wake();
+    }
+    const link = write({ u: snapped.u, v: snapped.v, width: snapped.width, ...this.state.toLink() });
+    if (link !== location.hash) history.replaceState(history.state, '', link);
+  }
+
+  /** @param {boolean} fly */
+  followLink(fly) {
+    const { view: link, bad } = read(location.hash);
+    const trouble = this.state.fromLink(link);
+    if (bad.length) trouble.push(['trouble_link', { part: bad[0] }]);
+    const { motion } = this;
+    const goal = link.u === undefined && link.v === undefined && link.width === undefined ? motion.limits.filled(motion.view) : motion.view.with(link);
+    if (fly) motion.fly(goal);
+    else motion.jump(goal);
+    for (const [key, fill] of trouble) this.status.say(say(key, fill), { stay: 9000 });
+  }
+
+  async copyLink() {
+    this.motion.stop();
+    this.hand.classList.remove('moving');
+    this.writeLink();
+    const done = await navigator.clipboard?.writeText(location.href).then(() => true, () => false);
+    this.copy.textContent = done ? say('link_copied') : say('link_copy');
+    if (!done) this.status.say(say('link_shown'));
+    setTimeout(() => (this.copy.textContent = say('link_copy')), 2000);
+  }
+
+  async copyReading() {
+    const done = await navigator.clipboard?.writeText(this.reading.text).then(() => true, () => false);
+    this.status.say(done ? say('copied_value') : this.reading.text);
+  }
+
+  /** The atlas was built anew while it was looked at. */
+  async reopen() {
+    if (this.reopening) return;
+    this.reopening = true;
+    this.tiles.clear();
+    try {
+      await Atlas.open();
+      sessionStorage.setItem('tilemap-rebuilt', '1');
+      location.reload();
+    } catch {
+      setTimeout(() => ((this.reopening = false), this.reopen()), 2000);
+    }
+  }
+}
+
+/** @param {Status} status @param {number} delay */
+async function start(status, delay = 500) {
+  let atlas;
+  try {
+    atlas = await Atlas.open();
+  } catch (error) {
+    status.say(say('trouble_atlas', { reason: error instanceof Error ? error.message : String(error) }), { kind: 'start', stay: 0 });
+    setTimeout(() => start(status, Math.min(delay * 2, 15000)), delay);
+    return;
+  }
+  new Frame(atlas, status);
+  status.clear('start');
+  if (sessionStorage.getItem('tilemap-rebuilt')) status.say(say('trouble_rebuilt'));
+  sessionStorage.removeItem('tilemap-rebuilt');
+}
+
+const status = new Status(at('status'));
+status.say('', { kind: 'start', stay: 0 });
+start(status);

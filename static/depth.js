@@ -1,0 +1,153 @@
+// The bottom edge: mass per slab along the line of sight, and a window on it that opens, closes and slides by whole slabs.
+// In: state. Out: a new window.
+
+import { slabTotals } from './atlas.js';
+import { dress, make, svg } from './dom.js';
+import { handle } from './handle.js';
+import { number, quantity } from './units.js';
+import { say } from './words.js';
+
+export class DepthEdge {
+  /** @param {HTMLElement} root @param {HTMLElement} corner where the window is put in words @param {import('./state.js').State} state */
+  constructor(root, corner, state) {
+    this.state = state;
+    root.setAttribute('aria-label', say('depth'));
+    this.field = make('div.field');
+    this.plot = svg('svg', { 'aria-hidden': 'true' });
+    this.field.append(this.plot);
+    const part = (name, /** @type {(to: number) => void} */ move, /** @type {(steps: number) => void} */ nudge) => {
+      const grip = handle(this.field, { name: say(name), along: 'horizontal', drag: (x) => move(this.edgeAt(x)), nudge, reset: () => this.whole() });
+      this.field.append(grip.root);
+      return grip;
+    };
+    this.slider = part('depth_slide', (to) => this.slide(to - this.state.slabs[0]), (n) => this.slide(n));
+    this.slider.root.classList.add('slide');
+    this.near = part('depth_near', (to) => this.open(to, null), (n) => this.open(this.state.slabs[0] + n, null));
+    this.far = part('depth_far', (to) => this.open(null, to), (n) => this.open(null, this.state.slabs[1] + n));
+    this.text = make('div.text', { role: 'status' });
+    this.all = make('button.word.act', { type: 'button', title: say('depth_whole_title'), click: () => this.whole() }, say('depth_whole'));
+    corner.append(this.text, this.all);
+    root.append(this.field);
+    this.field.addEventListener('pointerdown', (event) => {
+      if (event.target !== this.field && event.target !== this.plot && !this.plot.contains(/** @type {Node} */ (event.target))) return;
+      this.slide(this.slabAt(event.clientX - this.field.getBoundingClientRect().left) - this.state.slabs[0], true);
+    });
+    this.field.addEventListener('wheel', (event) => {
+      event.preventDefault();
+      this.slide(Math.sign(event.deltaY));
+    }, { passive: false });
+    new ResizeObserver(() => this.draw()).observe(this.field);
+  }
+
+  /** @param {number} by slabs @param {boolean} [single] from the whole depth, take the one slab that was touched */
+  slide(by, single = false) {
+    const { atlas, slabs, wholeDepth } = this.state;
+    if (wholeDepth && !single) return by === 0 ? undefined : this.set(by > 0 ? [0, 1] : [atlas.slabs - 1, atlas.slabs]);
+    const size = wholeDepth ? 1 : slabs[1] - slabs[0];
+    const first = Math.min(Math.max(slabs[0] + by, 0), atlas.slabs - size);
+    this.set([first, first + size]);
+  }
+
+  /** @param {number|null} near @param {number|null} far */
+  open(near, far) {
+    const { atlas, slabs } = this.state;
+    const a = near === null ? slabs[0] : Math.min(Math.max(near, 0), slabs[1] - 1);
+    const b = far === null ? slabs[1] : Math.max(Math.min(far, atlas.slabs), slabs[0] + 1);
+    this.set([a, b]);
+  }
+
+  /** Closes or opens both ends by one slab. @param {number} by 1 opens, -1 closes */
+  widen(by) {
+    const [a, b] = this.state.slabs;
+    const { slabs: n } = this.state.atlas;
+    if (by > 0) this.set([Math.max(a - 1, 0), Math.min(b + 1, n)]);
+    else if (b - a > 2) this.set([a + 1, b - 1]);
+    else if (b - a === 2) this.set([a, b - 1]);
+  }
+
+  whole() {
+    this.set([0, this.state.atlas.slabs]);
+  }
+
+  /** @param {[number, number]} slabs */
+  set(slabs) {
+    const [a, b] = this.state.slabs;
+    if (a !== slabs[0] || b !== slabs[1]) this.state.set({ slabs });
+  }
+
+  /** @param {number} depth */
+  x(depth) {
+    const [a, b] = [this.edges[0], this.edges[this.edges.length - 1]];
+    return this.pad + ((depth - a) / (b - a)) * (this.width - 2 * this.pad);
+  }
+
+  get edges() {
+    return this.state.atlas.edges;
+  }
+
+  /** The slab edge nearest to a place. @param {number} x CSS pixels */
+  edgeAt(x) {
+    return this.edges.reduce((best, e, i) => (Math.abs(this.x(e) - x) < Math.abs(this.x(this.edges[best]) - x) ? i : best), 0);
+  }
+
+  /** @param {number} x CSS pixels */
+  slabAt(x) {
+    const i = this.edges.findIndex((e) => this.x(e) > x);
+    return i < 0 ? this.state.atlas.slabs - 1 : Math.max(i - 1, 0);
+  }
+
+  draw() {
+    const { atlas, epoch, sheet, slabs, wholeDepth } = this.state;
+    const { clientWidth: w, clientHeight: h } = this.field;
+    if (!w || !h) return;
+    this.width = w;
+    this.pad = 6;
+    const { edges } = this;
+    const { totals, unit } = slabTotals(atlas, epoch, sheet);
+    const tall = h > 40;
+    const base = h - (tall ? 18 : 3);
+    const top = tall ? 16 : 4;
+    const density = totals.map((t, i) => Math.max(t, 0) / (edges[i + 1] - edges[i]));
+    const most = Math.max(...density) || 1;
+    this.plot.setAttribute('viewBox', `0 0 ${w} ${h}`);
+    const marks = [svg('path', { class: 'rung', d: `M${this.pad} ${base + 0.5}H${w - this.pad}` })];
+    density.forEach((d, i) => {
+      const [a, b] = [this.x(edges[i]), this.x(edges[i + 1])];
+      const height = ((base - top) * d) / most;
+      const on = i >= slabs[0] && i < slabs[1];
+      marks.push(svg('rect', { class: on ? 'bar on' : 'bar', x: a + 0.5, y: base - height, width: Math.max(b - a - 1, 0.5), height }));
+    });
+    let last = -Infinity;
+    edges.forEach((e, i) => {
+      const x = this.x(e);
+      if (!tall || x - last < 44) return;
+      last = x;
+      const anchor = i === 0 ? 'start' : i === edges.length - 1 ? 'end' : 'middle';
+      marks.push(svg('text', { x: i === 0 ? this.pad : i === edges.length - 1 ? w - this.pad : x, y: h - 4, 'text-anchor': anchor }, number(e, 3)));
+    });
+    const [x0, x1] = [this.x(edges[slabs[0]]), this.x(edges[slabs[1]])];
+    marks.push(svg('path', { class: 'grip', d: `M${x0} ${tall ? 8.5 : 0.5}H${x1}` }));
+    this.plot.replaceChildren(...marks);
+    this.describe(totals, unit);
+    const axis = atlas.view.axes?.[2] ?? '';
+    const reading = (depth) => `${axis} ${number(depth, 4)} ${atlas.view.unit}`.trim();
+    const limits = { min: edges[0], max: edges[edges.length - 1] };
+    this.near.place(x0, tall ? 8 : 0, { now: edges[slabs[0]], ...limits, text: reading(edges[slabs[0]]) });
+    this.far.place(x1, tall ? 8 : 0, { now: edges[slabs[1]], ...limits, text: reading(edges[slabs[1]]) });
+    this.slider.place(x0, 0, { now: edges[slabs[0]], ...limits, text: this.text.textContent });
+    this.slider.root.style.width = `${x1 - x0}px`;
+    dress(this.all, { hidden: wholeDepth });
+  }
+
+  /** The window in words. @param {number[]} totals @param {string} unit */
+  describe(totals, unit) {
+    const { atlas, slabs, wholeDepth, sheet } = this.state;
+    const axis = atlas.view.axes?.[2] ?? '';
+    const sum = (list) => list.reduce((a, b) => a + b, 0);
+    const [inside, all] = [sum(totals.slice(...slabs)), sum(totals)];
+    const where = say('depth_reading', { axis, a: number(this.edges[slabs[0]], 4), b: number(this.edges[slabs[1]], 4), unit: atlas.view.unit });
+    const total = sheet.kind === 'mean' && !sheet.weight ? '' : quantity(inside, unit, 3);
+    const share = all > 0 ? say('depth_share', { share: number((100 * inside) / all, 3), total: quantity(all, unit, 3) }) : '';
+    this.text.replaceChildren(make('div', {}, where), make('div.dim', {}, wholeDepth ? total : share));
+  }
+}

@@ -1,0 +1,106 @@
+// Hands on the map: drag and fling, wheel, pinch, tap and double tap, with mouse, pen or fingers alike. In: pointer events
+// on one element. Out: calls on the motion, and taps and hovers for others to use.
+
+/** @typedef {{tap(x: number, y: number, touch: boolean): void, hover(x: number|null, y: number|null): void, settled(): void, begin(): void}} Hands */
+
+const TAP_SLOP = 8;
+const TAP_TIME = 350;
+const DOUBLE_TIME = 300;
+
+/**
+ * @param {HTMLElement} element
+ * @param {() => import('./motion.js').Motion} motionOf
+ * @param {Hands} hands
+ */
+export function listen(element, motionOf, hands) {
+  /** @type {Map<number, [number, number]>} */
+  const down = new Map();
+  /** @type {[number, number, number][]} time, x, y of the last moves */
+  let trail = [];
+  let travelled = 0;
+  let pressed = 0;
+  let lastTap = { at: -1e9, x: 0, y: 0 };
+  let wheelRest = 0;
+
+  /** @param {{clientX: number, clientY: number}} event @returns {[number, number]} */
+  const place = (event) => {
+    const box = element.getBoundingClientRect();
+    return [event.clientX - box.left, event.clientY - box.top];
+  };
+
+  element.addEventListener('pointerdown', (event) => {
+    if (event.button !== 0) return;
+    element.setPointerCapture(event.pointerId);
+    motionOf().stop();
+    hands.begin();
+    down.set(event.pointerId, place(event));
+    if (down.size === 1) {
+      trail = [];
+      travelled = 0;
+      pressed = event.timeStamp;
+    } else travelled = Infinity;
+  });
+
+  element.addEventListener('pointermove', (event) => {
+    const [x, y] = place(event);
+    if (event.pointerType !== 'touch') hands.hover(x, y);
+    const before = down.get(event.pointerId);
+    if (!before) return;
+    if (down.size === 1) {
+      travelled += Math.hypot(x - before[0], y - before[1]);
+      if (travelled < TAP_SLOP && event.pointerType === 'touch') return;
+      down.set(event.pointerId, [x, y]);
+      trail.push([event.timeStamp, x, y]);
+      trail = trail.filter(([t]) => event.timeStamp - t < 100);
+      motionOf().drag(x - before[0], y - before[1]);
+      return;
+    }
+    const [a, b] = [...down.values()];
+    down.set(event.pointerId, [x, y]);
+    const [c, d] = [...down.values()];
+    const motion = motionOf();
+    const factor = Math.hypot(c[0] - d[0], c[1] - d[1]) / Math.max(Math.hypot(a[0] - b[0], a[1] - b[1]), 1);
+    motion.drag((c[0] + d[0] - a[0] - b[0]) / 2, (c[1] + d[1] - a[1] - b[1]) / 2);
+    motion.pinch((c[0] + d[0]) / 2, (c[1] + d[1]) / 2, factor);
+  });
+
+  /** @param {PointerEvent} event */
+  const up = (event) => {
+    if (!down.delete(event.pointerId)) return;
+    if (down.size > 0) {
+      trail = [];
+      return;
+    }
+    const [x, y] = place(event);
+    if (event.type === 'pointerup' && travelled < TAP_SLOP && event.timeStamp - pressed < TAP_TIME) {
+      const twice = event.timeStamp - lastTap.at < DOUBLE_TIME && Math.hypot(x - lastTap.x, y - lastTap.y) < 24;
+      lastTap = twice ? { at: -1e9, x, y } : { at: event.timeStamp, x, y };
+      if (twice) motionOf().zoomBy(x, y, event.shiftKey ? 0.5 : 2);
+      else hands.tap(x, y, event.pointerType === 'touch');
+    } else if (trail.length > 1 && event.timeStamp - trail[trail.length - 1][0] < 60) {
+      const [[t0, x0, y0], [t1, x1, y1]] = [trail[0], trail[trail.length - 1]];
+      if (t1 > t0) motionOf().fling((x1 - x0) / (t1 - t0), (y1 - y0) / (t1 - t0));
+    }
+    hands.settled();
+  };
+  element.addEventListener('pointerup', up);
+  element.addEventListener('pointercancel', up);
+  element.addEventListener('pointerleave', () => down.size === 0 && hands.hover(null, null));
+
+  element.addEventListener(
+    'wheel',
+    (event) => {
+      event.preventDefault();
+      const [x, y] = place(event);
+      // A line is about 18 pixels; a pinch on a trackpad comes as a wheel with ctrl and small steps.
+      const pixels = event.deltaY * (event.deltaMode === 1 ? 18 : event.deltaMode === 2 ? 400 : 1);
+      const rate = event.ctrlKey ? 0.01 : 0.0022;
+      const bounded = Math.min(Math.max(pixels * rate, -1), 1);
+      hands.begin();
+      motionOf().zoomBy(x, y, Math.exp(-bounded));
+      clearTimeout(wheelRest);
+      wheelRest = window.setTimeout(hands.settled, 150);
+    },
+    { passive: false },
+  );
+}

@@ -1,0 +1,102 @@
+// A view written as a link and read back: the part after # in the address, in physical units, so that a person can read
+// and edit it. #u=31.2&v=8.4&width=2.5&sheet=gas&depth=25:50&tone=1e5:3e8. What is as usual is left out.
+
+/**
+ * @typedef {object} Linked
+ * @property {number} [u] @property {number} [v] @property {number} [width] atlas unit
+ * @property {string} [epoch] @property {string} [sheet]
+ * @property {[number, number]} [depth] atlas unit
+ * @property {[number, number]} [tone] sheet unit
+ * @property {string} [curve] @property {string} [ramp]
+ * @property {[number, number]} [census] unit of the ranked column
+ * @property {string} [object] @property {string} [lengths] @property {string} [markers]
+ */
+
+const NUMBERS = ['u', 'v', 'width'];
+const PAIRS = ['depth', 'tone', 'census'];
+const NAMES = ['epoch', 'sheet', 'curve', 'ramp', 'object', 'lengths', 'markers'];
+const ORDER = ['u', 'v', 'width', 'epoch', 'sheet', 'depth', 'tone', 'curve', 'ramp', 'census', 'object', 'lengths', 'markers'];
+
+/**
+ * @param {Linked} view
+ * @returns {string} beginning with #
+ */
+export function write(view) {
+  const parts = [];
+  for (const key of ORDER) {
+    const value = view[key];
+    if (value === undefined || value === null) continue;
+    const text = Array.isArray(value) ? value.map(short).join(':') : typeof value === 'number' ? short(value) : escape(value);
+    parts.push(`${key}=${text}`);
+  }
+  return `#${parts.join('&')}`;
+}
+
+/**
+ * Reads what it can; what it cannot is named and left out.
+ * @param {string} fragment with or without #
+ * @returns {{view: Linked, bad: string[]}}
+ */
+export function read(fragment) {
+  /** @type {Linked} */
+  const view = {};
+  const bad = [];
+  for (const part of fragment.replace(/^#/, '').split('&')) {
+    if (!part) continue;
+    const cut = part.indexOf('=');
+    const key = part.slice(0, cut);
+    const text = unescape(part.slice(cut + 1));
+    if (NUMBERS.includes(key)) {
+      const x = real(text);
+      if (x === null || (key === 'width' && x <= 0)) bad.push(part);
+      else view[key] = x;
+    } else if (PAIRS.includes(key)) {
+      const pair = text.split(':').map(real);
+      if (pair.length !== 2 || pair[0] === null || pair[1] === null || pair[0] >= pair[1]) bad.push(part);
+      else view[key] = /** @type {[number, number]} */ (pair);
+    } else if (NAMES.includes(key) && text) view[key] = text;
+    else bad.push(part);
+  }
+  return { view, bad };
+}
+
+/** A number rounded so that write() and read() give it back. @param {number} x @param {number} digits significant */
+export const rounded = (x, digits) => Number(x.toPrecision(digits));
+
+/**
+ * Centre and width to what a link says of them: a hundredth of a CSS pixel, or less.
+ * @param {{u: number, v: number, width: number, w: number}} view
+ */
+export function settled({ u, v, width, w }) {
+  const places = Math.min(Math.max(2 + Math.ceil(-Math.log10(width / w)), 0), 12);
+  return { u: Number(u.toFixed(places)), v: Number(v.toFixed(places)), width: rounded(width, 7) };
+}
+
+/** @param {number} x */
+function short(x) {
+  const plain = String(x);
+  const size = Math.abs(x);
+  if (size !== 0 && (size >= 1e6 || size < 1e-4)) {
+    const power = x.toExponential().replace('e+', 'e');
+    if (power.length < plain.length) return power;
+  }
+  return plain;
+}
+
+/** @param {string} text */
+function real(text) {
+  const x = text.trim() === '' ? NaN : Number(text);
+  return Number.isFinite(x) ? x : null;
+}
+
+/** @param {string} text */
+const escape = (text) => encodeURIComponent(text);
+
+/** @param {string} text */
+function unescape(text) {
+  try {
+    return decodeURIComponent(text);
+  } catch {
+    return '';
+  }
+}

@@ -1,0 +1,58 @@
+// From a tone (dark end, bright end, curve, ramp) and a coding to a table with one colour for each code. Recolouring a
+// tile is one look-up per pixel, so no tile is fetched again when the tone changes.
+
+import { CODES, decode } from './coding.js';
+import { GROUND, ramp, STEPS } from './ramps.js';
+
+/** @typedef {{lo: number, hi: number, curve: string, ramp: string}} Tone dark and bright ends in the sheet's unit */
+/** @typedef {import('./coding.js').Coding} Coding */
+
+/** The curves that a coding can carry; signed values have no logarithm. @param {Coding} c */
+export function curves(c) {
+  return c.coding === 'log' ? ['log', 'asinh', 'linear'] : ['linear', 'asinh'];
+}
+
+/** The bend of the asinh curve (Lupton, Gunn & Szalay 1999): linear near the dark end, logarithmic near the bright one. */
+const BEND = 60;
+
+/**
+ * Where a value falls on the ramp.
+ * @param {number} value @param {Tone} tone
+ * @returns {number} 0 at the dark end, 1 at the bright end; not clipped
+ */
+export function shade(value, { lo, hi, curve }) {
+  if (curve === 'log') return Math.log(value / lo) / Math.log(hi / lo);
+  const x = (value - lo) / (hi - lo);
+  return curve === 'asinh' ? Math.asinh(BEND * x) / Math.asinh(BEND) : x;
+}
+
+/** The row of the ramp for a shade. @param {number} t */
+export function step(t) {
+  return Math.round(Math.min(Math.max(t, 0), 1) * (STEPS - 1));
+}
+
+/**
+ * One colour for each code, as the bytes R, G, B, A of a canvas read as a little-endian number.
+ * @param {Tone} tone @param {Coding} c
+ * @returns {Uint32Array} length 65536
+ */
+export function lut(tone, c) {
+  const colours = new Uint32Array(STEPS);
+  const rgb = ramp(tone.ramp);
+  for (let i = 0; i < STEPS; i++) colours[i] = pack(rgb[3 * i], rgb[3 * i + 1], rgb[3 * i + 2]);
+  const table = new Uint32Array(CODES);
+  table[0] = pack(...GROUND);
+  const straight = tone.curve === 'log' && c.coding === 'log';
+  const low = Math.log10(tone.lo);
+  const span = Math.log10(tone.hi) - low;
+  for (let code = 1; code < CODES; code++) {
+    const t = straight ? (c.low + c.step * (code - 1) - low) / span : shade(decode(code, c), tone);
+    table[code] = colours[step(t)];
+  }
+  return table;
+}
+
+/** @param {number} r @param {number} g @param {number} b */
+function pack(r, g, b) {
+  return (0xff000000 | (b << 16) | (g << 8) | r) >>> 0;
+}

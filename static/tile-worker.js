@@ -1,0 +1,204 @@
+// A worker that fetches tiles, unpacks them, sums the slabs of a depth window, colours them, and keeps their numbers to
+// count and to read. In: messages from tiles.js. Out: bitmaps, counts, values, or the reason why not.
+
+import { decode, encode, valueTable } from './coding.js';
+
+const SIDE = 512;
+const PIXELS = SIDE * SIDE;
+
+/** @typedef {import('./atlas.js').Recipe} Recipe */
+/**
+ * A tile in hand: codes to colour and count, and the exact values where several slabs were combined.
+ * @typedef {{codes: Uint16Array|null, values: Float32Array|null, shown: import('./coding.js').Coding}} Held
+ */
+
+/** @type {Map<string, Held>} */
+const held = new Map();
+/** @type {Map<string, AbortController>} */
+const running = new Map();
+/** @type {Map<number, Uint32Array>} colours by code, the last few tones */
+const luts = new Map();
+/** @type {Map<string, Float64Array>} */
+const tables = new Map();
+
+class Trouble extends Error {
+  /** @param {string} reason server | missing | gone | damaged */
+  constructor(reason) {
+    super(reason);
+    this.reason = reason;
+  }
+}
+
+const answers = {
+  /** @param {{id: number, table: Uint32Array}} m */
+  lut({ id, table }) {
+    luts.set(id, table);
+    for (const old of luts.keys()) if (luts.size > 8) luts.delete(old);
+  },
+  /** @param {{key: string, recipe: Recipe, lut: number, fresh: boolean}} m */
+  async load({ key, recipe, lut, fresh }) {
+    const control = new AbortController();
+    running.set(key, control);
+    try {
+      const tile = await make(recipe, control.signal, fresh);
+      if (control.signal.aborted) return;
+      held.set(key, tile);
+      const bytes = (tile.codes?.byteLength ?? 0) + (tile.values?.byteLength ?? 0);
+      await paint(key, tile, lut, bytes);
+    } catch (error) {
+      const reason = error instanceof Trouble ? error.reason : 'server';
+      if (!control.signal.aborted) postMessage({ type: 'failed', key, reason });
+    } finally {
+      if (running.get(key) === control) running.delete(key);
+    }
+  },
+  /** @param {{key: string}} m */
+  abort({ key }) {
+    running.get(key)?.abort();
+    running.delete(key);
+  },
+  /** @param {{key: string, lut: number}} m */
+  async paint({ key, lut }) {
+    const tile = held.get(key);
+    if (tile) await paint(key, tile, lut, 0);
+  },
+  /** @param {{key: string}} m */
+  drop({ key }) {
+    held.delete(key);
+  },
+  /** @param {{ask: number, tiles: {key: string, x0: number, x1: number, y0: number, y1: number}[], stride: number, first: number, last: number, bins: number}} m */
+  count({ ask, tiles, stride, first, last, bins }) {
+    const counts = new Uint32Array(bins);
+    const bin = new Uint16Array(65536);
+    for (let code = 1; code < 65536; code++) {
+      bin[code] = Math.min(Math.max(Math.floor(((code - first) / (last - first)) * bins), 0), bins - 1);
+    }
+    let nothing = 0;
+    for (const { key, x0, x1, y0, y1 } of tiles) {
+      const codes = held.get(key)?.codes;
+      if (!codes) continue;
+      for (let y = y0; y < y1; y += stride) {
+        const row = y * SIDE;
+        for (let x = x0; x < x1; x += stride) {
+          const code = codes[row + x];
+          if (code === 0) nothing++;
+          else counts[bin[code]]++;
+        }
+      }
+    }
+    postMessage({ type: 'answer', ask, counts, nothing }, { transfer: [counts.buffer] });
+  },
+  /** @param {{ask: number, key: string, column: number, row: number, across: number, down: number}} m */
+  read({ ask, key, column, row, across, down }) {
+    const tile = held.get(key);
+    const values = new Float64Array(across * down).fill(NaN);
+    if (tile?.codes) {
+      for (let j = 0; j < down; j++) {
+        for (let i = 0; i < across; i++) {
+          const at = (row + j) * SIDE + column + i;
+          if (tile.codes[at] === 0) continue;
+          values[j * across + i] = tile.values ? tile.values[at] : decode(tile.codes[at], tile.shown);
+        }
+      }
+    }
+    postMessage({ type: 'answer', ask, values, known: Boolean(tile) });
+  },
+};
+
+self.onmessage = ({ data }) => answers[data.type](data);
+
+/** @param {Recipe} recipe @param {AbortSignal} signal @param {boolean} fresh @returns {Promise<Held>} */
+async function make(recipe, signal, fresh) {
+  const { kind, coding, weightCoding, shown } = recipe;
+  const [tiles, weights] = await Promise.all([
+    Promise.all(recipe.tiles.map((address) => bring(address, signal, fresh))),
+    recipe.weights ? Promise.all(recipe.weights.map((address) => bring(address, signal, fresh))) : null,
+  ]);
+  if (tiles.every((codes) => codes === null)) return { codes: null, values: null, shown };
+  if (tiles.length === 1) return { codes: tiles[0], values: null, shown };
+  const values = kind === 'mean' ? mean(tiles, weights, coding, weightCoding) : sum(tiles, coding);
+  return { codes: recode(values, shown), values, shown };
+}
+
+/** One tile as stored: a gzip member with 512 x 512 little-endian codes. @param {string} address @param {AbortSignal} signal @param {boolean} fresh */
+async function bring(address, signal, fresh) {
+  const url = new URL(address, base);
+  const answer = await fetch(url, { signal, cache: fresh ? 'reload' : 'default' });
+  if (answer.status === 204) return null;
+  if (answer.status === 410) throw new Trouble('gone');
+  if (answer.status === 404) throw new Trouble('missing');
+  if (!answer.ok) throw new Trouble('server');
+  const packed = await answer.arrayBuffer();
+  let bytes;
+  try {
+    bytes = await new Response(new Blob([packed]).stream().pipeThrough(new DecompressionStream('gzip'))).arrayBuffer();
+  } catch {
+    throw new Trouble('damaged');
+  }
+  if (bytes.byteLength !== 2 * PIXELS) throw new Trouble('damaged');
+  return new Uint16Array(bytes);
+}
+
+/** Slabs add up as surface densities. Nothing anywhere stays nothing (NaN). @param {(Uint16Array|null)[]} tiles @param {any} coding */
+function sum(tiles, coding) {
+  const table = known(coding);
+  const total = new Float64Array(PIXELS);
+  const some = new Uint8Array(PIXELS);
+  for (const codes of tiles) {
+    if (!codes) continue;
+    for (let i = 0; i < PIXELS; i++) {
+      total[i] += table[codes[i]];
+      some[i] |= codes[i] ? 1 : 0;
+    }
+  }
+  return Float32Array.from(total, (x, i) => (some[i] ? x : NaN));
+}
+
+/** Means are weighted by their weight sheet. @param {(Uint16Array|null)[]} tiles @param {(Uint16Array|null)[]|null} weights @param {any} coding @param {any} weightCoding */
+function mean(tiles, weights, coding, weightCoding) {
+  const table = known(coding);
+  const heavy = weightCoding ? known(weightCoding) : null;
+  const above = new Float64Array(PIXELS);
+  const below = new Float64Array(PIXELS);
+  tiles.forEach((codes, k) => {
+    const weight = weights?.[k];
+    if (!codes || (weights && !weight)) return;
+    for (let i = 0; i < PIXELS; i++) {
+      if (codes[i] === 0) continue;
+      const w = heavy ? heavy[weight[i]] : 1;
+      above[i] += w * table[codes[i]];
+      below[i] += w;
+    }
+  });
+  return Float32Array.from(above, (x, i) => (below[i] > 0 ? x / below[i] : NaN));
+}
+
+/** Codes to colour the combined values with. @param {Float32Array} values @param {import('./coding.js').Coding} coding */
+function recode(values, coding) {
+  const codes = new Uint16Array(PIXELS);
+  for (let i = 0; i < PIXELS; i++) codes[i] = encode(values[i], coding);
+  return codes;
+}
+
+/** @param {import('./coding.js').Coding} coding */
+function known(coding) {
+  const name = JSON.stringify(coding);
+  if (!tables.has(name)) tables.set(name, valueTable(coding));
+  return tables.get(name);
+}
+
+/** @param {string} key @param {Held} tile @param {number} lut @param {number} bytes */
+async function paint(key, tile, lut, bytes) {
+  if (!tile.codes) return postMessage({ type: 'painted', key, lut, bitmap: null, bytes });
+  const colours = luts.get(lut);
+  if (!colours) return;
+  const picture = new ImageData(SIDE, SIDE);
+  const out = new Uint32Array(picture.data.buffer);
+  const { codes } = tile;
+  for (let i = 0; i < PIXELS; i++) out[i] = colours[codes[i]];
+  const bitmap = await createImageBitmap(picture);
+  postMessage({ type: 'painted', key, lut, bitmap, bytes }, { transfer: [bitmap] });
+}
+
+/** The document's address: tiles are named relative to it. It comes as the worker's name. */
+const base = self.name;

@@ -212,10 +212,12 @@ def _factor(build: BuildFile, source: Source, name: str, sheet: Sheet, pixel: fl
     try:
         factor = float((1.0 * per).to_value(unit))
     except u.UnitConversionError:
-        would = f"{plain or 'a number'} per area, such as {plain / u.Unit('kpc2' if not build.view.flat else build.view.unit + '2')}"
+        area = "kpc2" if not build.view.flat else f"{build.view.unit}2"
+        named = str(plain) or "no unit of its own"
         raise InputError(
-            f"{build.path}: sheets.{name}.unit is {sheet.unit}: {sheet.sum or sheet.mean} of {sheet.species} needs "
-            f"{would if sheet.sum else f'a unit like {plain}'}"
+            f"{build.path}: sheets.{name}.unit is {sheet.unit}: {sheet.sum or sheet.mean} of {sheet.species} has {named}, "
+            + (f"so a sum needs one such as {plain / u.Unit(area)}" if sheet.sum else "or one like it: write that, ")
+            + ("" if sheet.sum else f"or say in snapshot.species.{sheet.species}.fields what unit the field is in")
         ) from None
     return factor, str(plain) if plain != u.dimensionless_unscaled else ""
 

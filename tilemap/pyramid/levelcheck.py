@@ -1,0 +1,216 @@
+"""One pyramid of coded tiles in, the tiles that cannot be right out: each against those it was made of."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tilemap.pyramid.agree import mean_misfits, sum_misfits, total_bounds
+from tilemap.pyramid.coding import Coding
+from tilemap.pyramid.findings import Finding, TilePlace, whose
+from tilemap.pyramid.grid import TILE
+from tilemap.pyramid.reader import ArrayReader, unpack_tile
+from tilemap.pyramid.shards import DamagedError
+
+
+@dataclass
+class Stack:
+    """One pyramid of a sheet, of its slabs or of the whole, and what is needed to read it."""
+
+    root: Path
+    epoch: str
+    sheet: Mapping[str, Any]
+    whole: bool
+    levels: list[ArrayReader]
+    coding: Coding
+    weight: Stack | None = None
+    found: list[Finding] = field(default_factory=list)
+
+    def place(self, level: int, slab: int, row: int, column: int) -> TilePlace:
+        """The name of a tile."""
+        return TilePlace(self.epoch, self.sheet["name"], level, "whole" if self.whole else slab, row, column)
+
+    def path(self, level: int, slab: int, row: int, column: int) -> str:
+        """The file that a tile is in, relative to the atlas."""
+        reader = self.levels[level]
+        shard = reader.shard_path(slab, row // reader.shard_grid[0], column // reader.shard_grid[1])
+        return shard.relative_to(self.root).as_posix()
+
+    def codes(self, level: int, slab: int, row: int, column: int, found: list[Finding]) -> NDArray[np.uint16]:
+        """The tile; where it is damaged, that is put down and `_Unreadable` raised."""
+        path = self.path(level, slab, row, column)
+        try:
+            blob = self.levels[level].blob(slab, row, column)
+        except DamagedError as error:
+            found.append(Finding(path, f"{error.__cause__ or error}{whose(path)}"))
+            raise _Unreadable from error
+        try:
+            return _NONE if blob is None else unpack_tile(blob)
+        except DamagedError as error:
+            found.append(Finding(path, str(error), self.place(level, slab, row, column)))
+            raise _Unreadable from error
+
+
+class _Unreadable(Exception):
+    """A tile that a check needs is damaged, which has been put down."""
+
+
+_NONE = np.zeros((TILE, TILE), dtype=np.uint16)
+
+
+@dataclass
+class Checked:
+    """What a check found, and between which two numbers the pixels of level 0 that it saw add up."""
+
+    found: list[Finding] = field(default_factory=list)
+    least: float = 0.0
+    most: float = 0.0
+
+
+Check = Callable[[], Checked]
+
+
+def checks_of(stack: Stack, slabs: Stack | None) -> Iterator[tuple[int, Check]]:
+    """(slab, what to call) for every check of a pyramid; together they read each of its tiles."""
+    for level in range(1, len(stack.levels)):
+        rows, columns = stack.levels[level].tiles
+        for slab in range(stack.levels[0].shape[0]):
+            for row in range(rows):
+                for column in range(columns):
+                    yield slab, _Average(stack, level, slab, row, column)
+    if len(stack.levels) == 1:
+        for slab in range(stack.levels[0].shape[0]):
+            yield slab, _Single(stack, slab)
+    if slabs is not None:
+        level = min(1, len(stack.levels) - 1)
+        for row in range(stack.levels[level].tiles[0]):
+            for column in range(stack.levels[level].tiles[1]):
+                yield 0, _Whole(stack, slabs, level, row, column)
+
+
+@dataclass(frozen=True)
+class _Average:
+    """Is a tile the average of the four below it? Adds up level 0 in passing."""
+
+    stack: Stack
+    level: int
+    slab: int
+    row: int
+    column: int
+
+    def __call__(self) -> Checked:
+        checked, stack = Checked(), self.stack
+        try:
+            coarse = stack.codes(self.level, self.slab, self.row, self.column, checked.found)
+        except _Unreadable:
+            coarse = None
+        try:
+            parts = self._parts(stack, checked, count=self.level == 1)
+        except _Unreadable:
+            return checked
+        if coarse is None:
+            return checked
+        if stack.weight is None:
+            misfits = sum_misfits(coarse, parts, stack.coding, 0.25) if coarse.any() or parts.any() else 0
+        else:
+            try:
+                weights = self._parts(stack.weight, Checked())
+            except _Unreadable:
+                return checked
+            misfits = mean_misfits(coarse, parts, weights, stack.coding, stack.weight.coding)
+        if misfits:
+            path = stack.path(self.level, self.slab, self.row, self.column)
+            what = f"{_pixels(misfits)} not the {_mean_word(stack)} of level {self.level - 1}"
+            checked.found.append(Finding(path, what, stack.place(self.level, self.slab, self.row, self.column)))
+        return checked
+
+    def _parts(self, stack: Stack, checked: Checked, count: bool = False) -> NDArray[np.uint16]:
+        """The four pixels below every pixel: uint16 (4, 512, 512)."""
+        parts = np.zeros((4, TILE, TILE), dtype=np.uint16)
+        below = stack.levels[self.level - 1].tiles
+        half = TILE // 2
+        unreadable = False
+        for i in range(2):
+            for j in range(2):
+                row, column = 2 * self.row + i, 2 * self.column + j
+                if row >= below[0] or column >= below[1]:
+                    continue
+                try:
+                    codes = stack.codes(self.level - 1, self.slab, row, column, checked.found)
+                except _Unreadable:
+                    unreadable = True
+                    continue
+                if count:
+                    least, most = total_bounds(codes, stack.coding)
+                    checked.least += least
+                    checked.most += most
+                quarter = parts[:, i * half : (i + 1) * half, j * half : (j + 1) * half]
+                for k in range(4):
+                    quarter[k] = codes[k // 2 :: 2, k % 2 :: 2]
+        if unreadable:
+            raise _Unreadable
+        return parts
+
+
+@dataclass(frozen=True)
+class _Single:
+    """The one tile of a pyramid of one level: does it unpack, and what does it add up to?"""
+
+    stack: Stack
+    slab: int
+
+    def __call__(self) -> Checked:
+        checked = Checked()
+        try:
+            codes = self.stack.codes(0, self.slab, 0, 0, checked.found)
+        except _Unreadable:
+            return checked
+        checked.least, checked.most = total_bounds(codes, self.stack.coding)
+        return checked
+
+
+@dataclass(frozen=True)
+class _Whole:
+    """Is a tile of the whole the sum, or the weighted mean, of the slabs? One level says it for all."""
+
+    stack: Stack
+    slabs: Stack
+    level: int
+    row: int
+    column: int
+
+    def __call__(self) -> Checked:
+        checked, stack = Checked(), self.stack
+        try:
+            whole = stack.codes(self.level, 0, self.row, self.column, checked.found)
+            parts = self._parts(self.slabs)
+            if stack.weight is None or self.slabs.weight is None:
+                misfits = sum_misfits(whole, parts, stack.coding, 1.0)
+            else:
+                weights = self._parts(self.slabs.weight)
+                misfits = mean_misfits(whole, parts, weights, stack.coding, stack.weight.coding)
+        except _Unreadable:
+            return checked
+        if misfits:
+            path = stack.path(self.level, 0, self.row, self.column)
+            what = f"{_pixels(misfits)} not the {'sum' if stack.weight is None else 'weighted mean'} of the slabs"
+            checked.found.append(Finding(path, what, stack.place(self.level, 0, self.row, self.column)))
+        return checked
+
+    def _parts(self, stack: Stack) -> NDArray[np.uint16]:
+        count = stack.levels[self.level].shape[0]
+        # A damaged tile of a slab is put down by the check of its own pyramid.
+        return np.stack([stack.codes(self.level, slab, self.row, self.column, []) for slab in range(count)])
+
+
+def _pixels(count: int) -> str:
+    return f"{count} pixels are" if count > 1 else "1 pixel is"
+
+
+def _mean_word(stack: Stack) -> str:
+    return "average" if stack.weight is None else f"average, weighted by {stack.sheet['weight']},"

@@ -151,26 +151,22 @@ def write_atlas(
 def pyramid_of(sheet: SheetData, given: dict[str, SheetData], whole: bool) -> list[NDArray[np.float64]]:
     """The sheet's values level by level, in float64, each (slabs, rows, columns); NaN where a mean has nothing."""
     values = sheet.values.astype(np.float64)
+    there = np.isfinite(values).astype(np.float64)
     if sheet.kind == "sum":
-        upper, lower = np.nan_to_num(values, nan=0.0), None
+        upper, lower = np.nan_to_num(values, nan=0.0), np.ones_like(values)
     else:
         assert sheet.weight is not None
         lower = given[sheet.weight].values.astype(np.float64)
-        upper = np.where(lower > 0, np.nan_to_num(values, nan=0.0), 0.0) * lower
+        upper = np.nan_to_num(values, nan=0.0) * lower
+        there = (lower > 0).astype(np.float64)
     if whole:
-        upper = upper.sum(axis=0, keepdims=True)
-        lower = None if lower is None else lower.sum(axis=0, keepdims=True)
+        upper, there = upper.sum(axis=0, keepdims=True), there.sum(axis=0, keepdims=True)
+        lower = lower[:1] if sheet.kind == "sum" else lower.sum(axis=0, keepdims=True)
     levels = []
     for level in range(len(level_shapes(*values.shape[1:]))):
         if level:
-            upper = halve(upper)
-            lower = None if lower is None else halve(lower)
-        if lower is None:
-            levels.append(upper)
-        else:
-            levels.append(np.divide(upper, lower, out=np.full_like(upper, np.nan), where=lower > 0))
-    if sheet.kind == "sum" and np.isnan(sheet.coding.nothing):
-        levels[0] = values.sum(axis=0, keepdims=True) if whole else values
+            upper, lower, there = halve(upper), halve(lower), halve(there)
+        levels.append(np.divide(upper, lower, out=np.full_like(upper, np.nan), where=there > 0))
     return levels
 
 
@@ -194,7 +190,7 @@ def write_array(folder: Path, codes: NDArray[np.uint16]) -> None:
 def write_levels(folder: Path, levels: list[NDArray[np.float64]], coding: Coding) -> None:
     """Write the arrays of all levels below `folder`."""
     for level, values in enumerate(levels):
-        create_array(folder / str(level), values.shape)  # type: ignore[arg-type]
+        create_array(folder / str(level), values.shape)
         write_array(folder / str(level), coding.encode(values))
 
 
@@ -224,7 +220,7 @@ def _write_sheet(root: Path, sheet: SheetData, given: dict[str, SheetData], pixe
     if sheet.kind == "sum":
         area = (pixel * u.Mpc * (SCALE_FACTOR if sheet.area == "proper" else 1.0)) ** 2
         per_pixel = (area * u.Unit(sheet.unit)).to_value(u.Unit(sheet.total_unit))
-        totals = levels[0].sum(axis=(1, 2)) * per_pixel
+        totals = np.nansum(levels[0], axis=(1, 2)) * per_pixel
         described |= {"total": float(totals.sum()), "total_unit": sheet.total_unit, "totals": totals.tolist()}
     create_group(folder, described)
     write_levels(folder, levels, sheet.coding)

@@ -1,6 +1,8 @@
 """Tables in, Parquet and its description out, on tables of each kind and on the real groups of run32."""
 
 import csv
+import subprocess
+import sys
 from pathlib import Path
 
 import duckdb
@@ -244,3 +246,19 @@ def test_a_damaged_table_is_refused_in_one_line(tmp_path):
 
 def test_a_table_without_rows_is_refused(tmp_path):
     assert "no rows" in refusal(tmp_path, table()[:0])
+
+
+def test_a_file_that_cannot_be_written_is_an_error_of_the_system(tmp_path):
+    # A real limit of the kernel's, setrlimit(2), in a process of its own: the disk is as good as full after 2000 bytes.
+    code = f"""
+import resource, sys
+sys.path[:0] = {sys.path!r}
+from test_ingest import GROUPS, RUN32, ingest, view_of
+resource.setrlimit(resource.RLIMIT_FSIZE, (2000, 2000))
+try:
+    ingest(GROUPS, RUN32, view_of(), {str(tmp_path)!r})
+except OSError as failure:
+    print(type(failure).__name__, failure.filename, sep=":")
+"""
+    ran = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, timeout=120)
+    assert ran.stdout == f"OSError:{tmp_path}/catalogue/objects.parquet\n", ran.stderr

@@ -1,5 +1,6 @@
 """The list of atlases, the frame's files and atlas.json: content, tags, relative addresses, safety."""
 
+import gzip
 import io
 import json
 import re
@@ -182,3 +183,20 @@ def test_what_is_no_atlas_is_refused_at_the_start(tmp_path, monkeypatch, paths):
     monkeypatch.chdir(tmp_path)
     with pytest.raises(InputError):
         make_app(paths)
+
+
+@pytest.mark.parametrize("path", ["/field/frame/view.js", "/field/atlas.json", "/field/objects?limit=200"])
+def test_long_text_travels_packed_for_those_who_can_unpack_it(client, path):
+    plain = client.get(path)
+    packed = client.get(path, headers={"Accept-Encoding": "gzip, deflate, br"})
+    assert "Content-Encoding" not in plain.headers
+    assert packed.headers["Content-Encoding"] == "gzip" and gzip.decompress(packed.data) == plain.data
+    assert plain.headers["Vary"] == packed.headers["Vary"] == "Accept-Encoding"
+    assert plain.headers["ETag"] != packed.headers["ETag"]
+    again = client.get(path, headers={"Accept-Encoding": "gzip", "If-None-Match": packed.headers["ETag"]})
+    assert again.status_code == 304
+
+
+def test_who_refuses_packed_text_gets_it_plain(client):
+    response = client.get("/field/atlas.json", headers={"Accept-Encoding": "gzip;q=0, identity"})
+    assert "Content-Encoding" not in response.headers

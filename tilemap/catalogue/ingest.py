@@ -6,7 +6,9 @@ the view are written along a space-filling curve with every column they came wit
 
 from __future__ import annotations
 
+import errno
 import json
+import os
 from collections.abc import Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -193,11 +195,15 @@ def _write(path: Path, columns: list[Column]) -> None:
     with duckdb.connect(config={"autoinstall_known_extensions": False}) as connection:
         connection.register("arrays", arrays)
         connection.execute("SET preserve_insertion_order = true")
-        connection.execute(
-            f"COPY (SELECT {chosen} FROM arrays) TO ? (FORMAT parquet, COMPRESSION zstd, ROW_GROUP_SIZE {ROW_GROUP}, "
-            "KV_METADATA {units: ?})",
-            [str(path), metadata],
-        )
+        try:
+            connection.execute(
+                f"COPY (SELECT {chosen} FROM arrays) TO ? (FORMAT parquet, COMPRESSION zstd, ROW_GROUP_SIZE {ROW_GROUP}, "
+                "KV_METADATA {units: ?})",
+                [str(path), metadata],
+            )
+        except duckdb.IOException as failure:  # a full disk, mostly: said in the way that everything else says it
+            full = os.strerror(errno.ENOSPC) in str(failure)
+            raise OSError(errno.ENOSPC if full else errno.EIO, str(failure).splitlines()[0], str(path)) from failure
 
 
 def quoted(name: str) -> str:

@@ -39,6 +39,6 @@ if ! fits "$stamp [test]" && ! fits "$stamp $extra"; then
         "$python" -m venv --clear "$venv"
     fi
     say "installing tilemap$extra into $venv ..."
-    "$venv/bin/python" -m pip install --quiet --disable-pip-version-check --editable "$root$extra"
+    "$venv/bin/python" -m pip install --quiet --quiet --disable-pip-version-check --editable "$root$extra"
     printf '%s\n' "$stamp $extra" >"$stamp_file"
 fi

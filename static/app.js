@@ -7,8 +7,9 @@ import { DepthEdge } from './depth.js';
 import { make, words } from './dom.js';
 import { folding } from './folding.js';
 import { listen } from './gestures.js';
+import { PixelGrid } from './grid.js';
 import { keyboard, keysNote } from './keys.js';
-import { read, settled, write } from './link.js';
+import { Linking } from './linking.js';
 import { MapSurface } from './map.js';
 import { Markers } from './markers.js';
 import { Motion } from './motion.js';
@@ -33,7 +34,7 @@ export class Frame {
     this.status = status;
     this.hand = at('hand');
     this.frameAsked = 0;
-    this.timers = { tiles: 0, counts: 0, link: 0 };
+    this.timers = { tiles: 0, counts: 0 };
     this.asked = { tiles: 0, counts: 0 };
     /** @type {Map<string, Layer>} */
     this.layers = new Map();
@@ -53,6 +54,7 @@ export class Frame {
       go: (found) => this.goTo(found),
       wake: () => this.wake(),
     });
+    this.grid = new PixelGrid(this.map, () => this.wake());
     this.tone = new ToneEdge(at('tone'), this.state);
     this.scale = new ScaleEdge(at('scale'), this.state, () => this.motion);
     this.depth = new DepthEdge(at('depth'), at('depth-corner'), this.state);
@@ -65,6 +67,7 @@ export class Frame {
     this.sheets = words(say('sheets'), (sheetName) => this.state.set({ sheetName }));
     this.sheets.root.classList.add('column');
     at('sheets').append(this.sheets.root);
+    this.linking = new Linking(this);
     this.title();
     listen(this.hand, () => this.motion, {
       tap: (x, y, touch) => this.tapped(x, y, touch),
@@ -75,10 +78,9 @@ export class Frame {
     this.hand.setAttribute('aria-label', say('map'));
     keyboard(this);
     folding(this.hand);
-    addEventListener('hashchange', () => this.followLink(true));
     new ResizeObserver(() => this.resized()).observe(at('map'));
     this.resized();
-    this.followLink(false);
+    this.linking.follow(false);
     this.stateChanged(new Set(['sheetName']));
   }
 
@@ -90,9 +92,8 @@ export class Frame {
     if (redshift !== null && redshift !== undefined && atlas.view.coordinates === 'comoving') facts.push(say('epoch', { z: fixed(redshift, 2) }));
     if (age) facts.push(say('age', { age: fixed(age, 1) }));
     at('title').replaceChildren(make('h1', { title: atlas.json.about ?? '' }, atlas.title || say('untitled')), make('div.dim', {}, facts.join(' · ')));
-    this.copy = make('button.word.act', { type: 'button', click: () => this.copyLink() }, say('link_copy'));
     const keys = make('button.word.act', { type: 'button', click: () => this.showKeys() }, say('keys'));
-    at('links').replaceChildren(this.copy, keys);
+    at('links').replaceChildren(this.linking.word, keys);
   }
 
   // What is shown ------------------------------------------------------------------------------------------------
@@ -118,7 +119,7 @@ export class Frame {
     this.scale.draw();
     this.askTiles(0);
     this.catalogue.ask(this.motion.view, 150);
-    this.linkSoon();
+    this.linking?.soon();
     this.wake();
   }
 
@@ -126,7 +127,7 @@ export class Frame {
     this.askTiles(60);
     this.askCounts(120);
     this.catalogue.ask(this.motion.view, 250);
-    this.linkSoon();
+    this.linking?.soon();
     this.wake();
   }
 
@@ -146,7 +147,7 @@ export class Frame {
     this.motion.step(now);
     const { view } = this.motion;
     const more = this.map.render(view, now);
-    this.markers.draw(view);
+    this.markers.draw(view, (context) => this.grid.draw(context, view));
     if (this.drawnView !== view) this.scale.draw();
     this.drawnView = view;
     this.reading.update(view);
@@ -179,8 +180,9 @@ export class Frame {
         const parts = this.map.parts(this.motion.view);
         const pixels = parts.reduce((sum, p) => sum + (p.x1 - p.x0) * (p.y1 - p.y0), 0);
         const stride = Math.max(Math.round(Math.sqrt(pixels / 4e5)), 1);
-        const { counts } = await this.tiles.count(parts, { stride, ...this.tone.binning(front.layer.coding) });
-        this.tone.setCounts(counts);
+        const how = this.tone.binning(front.layer.coding);
+        const { counts } = await this.tiles.count(parts, { stride, ...how });
+        this.tone.setCounts(counts, how, front.layer.coding);
       }
       this.timers.counts = 0;
     }, every);
@@ -209,7 +211,6 @@ export class Frame {
 
   /** @param {number} x @param {number} y @param {boolean} touch */
   tapped(x, y, touch) {
-    this.hand.focus({ preventScroll: true });
     if (this.markers.tap(x, y)) return;
     if (touch) {
       this.reading.hover(null, null);
@@ -259,8 +260,6 @@ export class Frame {
     note.replaceChildren(...keysNote(() => this.putAway()));
   }
 
-  // Links --------------------------------------------------------------------------------------------------------
-
   /** An object that the link names but that is not among the heaviest in view is looked for. */
   async seekObject() {
     const { object } = this.state;
@@ -270,46 +269,6 @@ export class Frame {
     if (this.state.object !== object) return;
     if (found) this.markers.adopt(found);
     else this.status.say(say('trouble_object', { name: object }));
-  }
-
-  linkSoon() {
-    clearTimeout(this.timers.link);
-    this.timers.link = window.setTimeout(() => this.writeLink(), 250);
-  }
-
-  writeLink() {
-    if (this.motion.moving || this.hand.classList.contains('moving')) return this.linkSoon();
-    const { view } = this.motion;
-    const snapped = this.motion.limits.clamp(view.with(settled(view)));
-    if (!snapped.equals(view)) {
-      // The view becomes exactly what the link says; the difference is below a hundredth of a pixel.
-      this.motion.view = snapped;
-      this.wake();
-    }
-    const link = write({ u: snapped.u, v: snapped.v, width: snapped.width, ...this.state.toLink() });
-    if (link !== location.hash) history.replaceState(history.state, '', link);
-  }
-
-  /** @param {boolean} fly */
-  followLink(fly) {
-    const { view: link, bad } = read(location.hash);
-    const trouble = this.state.fromLink(link);
-    if (bad.length) trouble.push(['trouble_link', { part: bad[0] }]);
-    const { motion } = this;
-    const goal = link.u === undefined && link.v === undefined && link.width === undefined ? motion.limits.filled(motion.view) : motion.view.with(link);
-    if (fly) motion.fly(goal);
-    else motion.jump(goal);
-    for (const [key, fill] of trouble) this.status.say(say(key, fill), { stay: 9000 });
-  }
-
-  async copyLink() {
-    this.motion.stop();
-    this.hand.classList.remove('moving');
-    this.writeLink();
-    const done = await navigator.clipboard?.writeText(location.href).then(() => true, () => false);
-    this.copy.textContent = done ? say('link_copied') : say('link_copy');
-    if (!done) this.status.say(say('link_shown'));
-    setTimeout(() => (this.copy.textContent = say('link_copy')), 2000);
   }
 
   async copyReading() {

@@ -136,17 +136,19 @@ export class CensusEdge {
     const top = 6;
     const most = Math.max(...counts.whole, 1);
     // Counts are drawn by their square root: one heavy cluster is as easy to see as the thousandth dwarf.
-    const y = (n) => base - (base - top) * Math.sqrt(n / most);
+    // The bars fill the height with what is in view; the outline keeps the shape of the whole.
+    const seenMost = Math.max(...counts.in_view, 1);
+    const y = (n, top_n) => base - (base - top) * Math.sqrt(n / top_n);
     const [lo, hi] = this.ends;
     const marks = [];
     let outline = `M${this.x(counts.edges[0])} ${base}`;
     counts.whole.forEach((n, i) => {
       const [a, b] = [this.x(counts.edges[i]), this.x(counts.edges[i + 1])];
-      outline += `V${y(n).toFixed(1)}H${b.toFixed(1)}`;
+      outline += `V${y(n, most).toFixed(1)}H${b.toFixed(1)}`;
       const seen = counts.in_view[i];
       if (!seen) return;
       const on = counts.edges[i + 1] > lo && counts.edges[i] < hi;
-      marks.push(svg('rect', { class: on ? 'bar on' : 'bar', x: a + 0.5, y: y(seen), width: Math.max(b - a - 1, 0.5), height: base - y(seen) }));
+      marks.push(svg('rect', { class: on ? 'bar on' : 'bar', x: a + 0.5, y: y(seen, seenMost), width: Math.max(b - a - 1, 0.5), height: base - y(seen, seenMost) }));
     });
     marks.unshift(svg('path', { class: 'outline', d: `${outline}V${base}` }), svg('path', { class: 'rung', d: `M${this.pad} ${base + 0.5}H${w - this.pad}` }));
     if (tall) marks.push(...this.numerals(h));
@@ -165,9 +167,11 @@ export class CensusEdge {
     const [a, b] = this.span;
     const texts = [];
     const put = (value, text) => texts.push(svg('text', { x: this.x(value), y: h - 4, 'text-anchor': 'middle' }, text));
-    if (counts.log) for (let p = Math.ceil(a); p <= b; p++) put(10 ** p, decade(p));
-    else for (let i = 1; i < 6; i++) put(a + ((b - a) * i) / 6, number(a + ((b - a) * i) / 6, 3));
-    texts.push(svg('text', { x: this.width - this.pad, y: h - 4, 'text-anchor': 'end' }, [counts.column, unit(counts.unit)].filter(Boolean).join(', ')));
+    const label = [counts.column.replaceAll('_', ' '), unit(counts.unit)].filter(Boolean).join(', ');
+    const room = this.width - this.pad - 8 * label.length - 24;
+    if (counts.log) for (let p = Math.ceil(a); p <= b; p++) this.x(10 ** p) < room && put(10 ** p, decade(p));
+    else for (let i = 1; i < 5; i++) put(a + ((b - a) * i) / 6, number(a + ((b - a) * i) / 6, 3));
+    texts.push(svg('text', { x: this.width - this.pad, y: h - 4, 'text-anchor': 'end' }, label));
     return texts;
   }
 

@@ -147,7 +147,7 @@ export class DepthEdge {
     const [inside, all] = [sum(totals.slice(...slabs)), sum(totals)];
     const where = say('depth_reading', { axis, a: number(this.edges[slabs[0]], 4), b: number(this.edges[slabs[1]], 4), unit: atlas.view.unit });
     const total = sheet.kind === 'mean' && !sheet.weight ? '' : quantity(inside, unit, 3);
-    const share = all > 0 ? say('depth_share', { share: number((100 * inside) / all, 3), total: quantity(all, unit, 3) }) : '';
+    const share = all > 0 ? say('depth_share', { share: number((100 * inside) / all, 3) }) : '';
     this.text.replaceChildren(make('div', {}, where), make('div.dim', {}, wholeDepth ? total : share));
   }
 }

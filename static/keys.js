@@ -40,7 +40,7 @@ export function keyboard(frame) {
     m: () => state.set({ markers: !state.markers }),
     u: () => frame.scale.turn(),
     c: () => frame.copyReading(),
-    k: () => frame.copyLink(),
+    k: () => frame.linking.copy(),
     '?': () => frame.showKeys(),
     Escape: () => frame.putAway(),
   };

@@ -142,7 +142,7 @@ export class MapSurface {
     for (let row = range.r0; row < range.r1; row++) {
       for (let column = range.c0; column < range.c1; column++) {
         const tile = this.tiles.all.get(plate.layer.key(level, row, column));
-        if (!tile || (tile.bytes < 0 && tile.state !== 'failed')) return false;
+        if (!tile || (tile.state !== 'failed' && (tile.bytes < 0 || tile.lut < plate.lut))) return false;
       }
     }
     return true;
@@ -172,7 +172,7 @@ export class MapSurface {
     const { next } = this;
     if (!next) return;
     const base = this.tiles.all.get(next.layer.key(next.layer.atlas.levels - 1, 0, 0));
-    const standing = base && base.bytes >= 0 && (!this.front || now - this.since > PATIENCE);
+    const standing = base && base.bytes >= 0 && base.lut >= next.lut && (!this.front || now - this.since > PATIENCE);
     if (!standing && !this.complete(next, view)) return;
     this.old = this.calm.matches || !this.front ? null : this.front;
     this.fadeFrom = now;

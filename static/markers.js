@@ -130,12 +130,13 @@ export class Markers {
     return kept;
   }
 
-  /** @param {View} view */
-  draw(view) {
+  /** @param {View} view @param {(context: CanvasRenderingContext2D) => void} below what is drawn under the rings */
+  draw(view, below) {
     const { context, ratio, canvas } = this;
     context.setTransform(1, 0, 0, 1, 0, 0);
     context.clearRect(0, 0, canvas.width, canvas.height);
     context.setTransform(ratio, 0, 0, ratio, 0, 0);
+    below(context);
     this.rings = this.state.markers ? this.thinned(view) : [];
     context.lineWidth = 1;
     for (const ring of this.rings) {
@@ -183,11 +184,11 @@ export class Markers {
       if (name === catalogue.id || !(name in chosen.columns)) continue;
       const value = chosen.columns[name];
       const text = typeof value === 'number' ? number(value, 5) : value === null ? '–' : String(value);
-      list.append(make('dt', {}, name), make('dd', {}, [text, unit(of)].filter(Boolean).join(' ')));
+      list.append(make('dt', {}, name.replaceAll('_', ' ')), make('dd', {}, [text, unit(of)].filter(Boolean).join(' ')));
     }
     const word = (key, click) => make('button.word.act', { type: 'button', click }, say(key));
     note.append(
-      make('h2', {}, say('object', { id: Markers.name(chosen) })),
+      make('h2', {}, /^\D/.test(Markers.name(chosen)) ? Markers.name(chosen) : say('object', { id: Markers.name(chosen) })),
       list,
       make('div.words', {}, word('object_go', () => this.does.go(chosen)), word('object_close', () => state.set({ object: null }))),
     );

@@ -6,11 +6,14 @@
  * @typedef {[number, number, number, number]} Stop
  */
 
+/** Every ramp begins with the same dark, which is also the colour of nothing and of the room around the volume. */
+const DARK = /** @type {Stop} */ ([0, 0.105, 0.012, 268]);
+
 /** @type {Record<string, Stop[]>} names of the shore; the order is the order on screen */
 const STOPS = {
   // night tide, sea glass, dry sand, first light
   strandline: [
-    [0, 0.1, 0.018, 262],
+    DARK,
     [0.16, 0.19, 0.05, 262],
     [0.36, 0.36, 0.078, 245],
     [0.54, 0.55, 0.075, 218],
@@ -21,7 +24,7 @@ const STOPS = {
   ],
   // wet peat, bronze weed, copper, shell
   kelpfire: [
-    [0, 0.1, 0.012, 150],
+    DARK,
     [0.2, 0.22, 0.04, 130],
     [0.42, 0.4, 0.075, 90],
     [0.62, 0.58, 0.13, 55],
@@ -31,7 +34,7 @@ const STOPS = {
   ],
   // dark flint, pearl, a warm point
   starwort: [
-    [0, 0.09, 0.01, 280],
+    DARK,
     [0.25, 0.25, 0.035, 285],
     [0.5, 0.47, 0.05, 275],
     [0.72, 0.7, 0.045, 255],
@@ -40,7 +43,7 @@ const STOPS = {
   ],
   // deep water to silver
   undertow: [
-    [0, 0.1, 0.02, 295],
+    DARK,
     [0.22, 0.23, 0.085, 293],
     [0.45, 0.42, 0.13, 285],
     [0.66, 0.62, 0.11, 268],
@@ -49,7 +52,7 @@ const STOPS = {
   ],
   // shade, moss, lichen on stone
   lichen: [
-    [0, 0.1, 0.015, 200],
+    DARK,
     [0.25, 0.25, 0.045, 180],
     [0.5, 0.46, 0.085, 155],
     [0.75, 0.71, 0.12, 125],
@@ -58,7 +61,7 @@ const STOPS = {
   ],
   // heath in August
   heather: [
-    [0, 0.1, 0.02, 320],
+    DARK,
     [0.25, 0.26, 0.08, 325],
     [0.5, 0.46, 0.12, 335],
     [0.72, 0.67, 0.12, 355],
@@ -67,16 +70,13 @@ const STOPS = {
   ],
   // no hue at all, for print
   shingle: [
-    [0, 0.1, 0, 0],
+    DARK,
     [1, 0.985, 0, 0],
   ],
 };
 
 export const RAMPS = Object.keys(STOPS);
 export const STEPS = 1024;
-
-/** The colour of code 0, and of the room outside the volume: the ground on which every ramp begins. */
-export const GROUND = /** @type {const} */ ([5, 6, 9]);
 
 /** @type {Map<string, Uint8ClampedArray>} */
 const made = new Map();
@@ -96,6 +96,9 @@ export function ramp(name) {
   made.set(name, table);
   return table;
 }
+
+/** The colour of code 0 and of the room around the volume, sRGB bytes. */
+export const GROUND = /** @type {[number, number, number]} */ ([...ramp('shingle').subarray(0, 3)]);
 
 /** A CSS gradient of the ramp, dark end first. @param {string} name @param {string} direction */
 export function gradient(name, direction) {

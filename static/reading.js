@@ -38,7 +38,8 @@ export class Reading {
     const sheet = this.map.front?.layer.sheet ?? this.state.sheet;
     const places = decimals(Math.max(1 / view.scale, atlas.pixel / 10));
     const [a, b] = atlas.view.axes ?? ['u', 'v'];
-    this.where.textContent = `${a} ${fixed(u, places)}  ${b} ${fixed(v, places)} ${atlas.view.unit}`;
+    this.where.replaceChildren(...[[a, u], [b, v]].map(([axis, x]) => make('div', {}, `${axis} ${fixed(x, places)} ${atlas.view.unit}`)));
+    const where = `${a} = ${fixed(u, places)}, ${b} = ${fixed(v, places)} ${atlas.view.unit}`;
     const ask = ++this.asked;
     const at = this.map.pixelAt(view, u, v);
     const found = at ? await this.map.tiles.read(at.key, at.column, at.row) : null;
@@ -49,7 +50,7 @@ export class Reading {
     else if (Number.isNaN(value)) this.show(say('reading_none'));
     else this.show(number(value), unit(sheet.unit));
     const exact = value === null || Number.isNaN(value) ? '' : `${Number(value.toPrecision(7))} ${sheet.unit}`;
-    this.text = `${exact} at ${this.where.textContent} (${sheet.title || sheet.name}, level ${at?.level ?? '-'})`.trim();
+    this.text = `${exact} at ${where} (${sheet.title || sheet.name}, level ${at?.level ?? '-'})`.trim();
     this.value.dataset.value = value === null || Number.isNaN(value) ? '' : String(value);
     this.tell(value);
   }

@@ -82,7 +82,8 @@ export class Tiles {
       if (tile.state === 'ready') {
         if (tile.asked !== lut) this.paint(tile, lut);
       } else {
-        if (tile.state !== 'loading') tile.asked = lut;
+        // One that is loading is painted again if it comes in the old colours.
+        tile.asked = lut;
         if (tile.state === 'waiting' || (tile.state === 'failed' && performance.now() > tile.retry)) this.queue.push(tile);
       }
     }

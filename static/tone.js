@@ -10,7 +10,8 @@ import { gradient, ramp, RAMPS } from './ramps.js';
 import { decade, number, quantity, unit } from './units.js';
 import { say } from './words.js';
 
-const BINS = 960;
+/** At most so many bins; each is a whole number of codes wide, so that all hold equally many. */
+const BINS = 420;
 
 export class ToneEdge {
   /** @param {HTMLElement} root @param {import('./state.js').State} state */
@@ -135,15 +136,13 @@ export class ToneEdge {
 
   /** Both ends from the values in view: all but the emptiest fifth and the brightest few pixels. */
   auto() {
-    const total = this.counts?.reduce((a, b) => a + b, 0);
+    const total = this.counts?.reduce((a, b) => a + b, 0) ?? 0;
     if (!total) return;
     const level = (part) => {
+      const [first, last] = this.counted;
       let sum = 0;
-      for (let i = 0; i < BINS; i++) {
-        sum += this.counts[i];
-        if (sum >= part * total) return this.bottom + ((i + 0.5) / BINS) * this.span;
-      }
-      return this.top;
+      const i = this.counts.findIndex((n) => (sum += n) >= part * total);
+      return first + ((i + 0.5) / this.counts.length) * (last - first);
     };
     const [lo, hi] = [level(0.05), level(0.9995)];
     const room = Math.max(hi - lo, this.log ? 0.3 : this.span / 100);
@@ -153,12 +152,19 @@ export class ToneEdge {
   /** How the codes in view are to be counted. @param {import('./coding.js').Coding} coding */
   binning(coding) {
     this.limits();
-    return { bins: BINS, first: position(this.value(this.bottom), coding), last: position(this.value(this.top), coding) };
+    const first = Math.round(position(this.value(this.bottom), coding));
+    const width = Math.max(Math.ceil((position(this.value(this.top), coding) - first) / BINS), 1);
+    const bins = Math.ceil((position(this.value(this.top), coding) - first) / width);
+    return { bins, first, last: first + bins * width };
   }
 
-  /** @param {Float64Array} counts */
-  setCounts(counts) {
+  /**
+   * @param {Float64Array} counts
+   * @param {{first: number, last: number}} how the codes they were counted between @param {import('./coding.js').Coding} coding
+   */
+  setCounts(counts, { first, last }, coding) {
     this.counts = counts;
+    this.counted = [coding.low + coding.step * (first - 1), coding.low + coding.step * (last - 1)];
     this.drawBars();
   }
 
@@ -192,22 +198,29 @@ export class ToneEdge {
 
   /** The ramp as this tone lays it along the axis. @param {import('./lut.js').Tone} tone */
   drawStrip(tone) {
-    const rows = Math.round(this.height * devicePixelRatio);
-    this.strip.height = rows;
+    const [rows, across] = [Math.round(this.height * devicePixelRatio), 9];
+    Object.assign(this.strip, { width: across, height: rows });
     const context = this.strip.getContext('2d');
-    const picture = context.createImageData(1, rows);
+    const picture = context.createImageData(across, rows);
     const colours = ramp(tone.ramp);
     for (let i = 0; i < rows; i++) {
-      const k = 3 * step(shade(this.value(this.at(((i + 0.5) / rows) * this.height)), tone));
-      picture.data.set([colours[k], colours[k + 1], colours[k + 2], 255], 4 * i);
+      const t = shade(this.value(this.at(((i + 0.5) / rows) * this.height)), tone);
+      const k = 3 * step(t);
+      // Beyond its ends the ramp goes on as a thread: all of that is one colour.
+      const from = t < 0 || t > 1 ? across - 2 : 0;
+      for (let x = from; x < across; x++) picture.data.set([colours[k], colours[k + 1], colours[k + 2], 255], 4 * (i * across + x));
     }
     context.putImageData(picture, 0, 0);
   }
 
   drawTicks() {
     const marks = [];
+    const { tone } = this.state;
+    const [hi, lo] = [this.y(tone.hi) - 7, this.y(tone.lo) + 9];
+    const room = this.unit.offsetHeight * 0.62;
     const add = (x, text) => {
       const y = ((this.top - x) / this.span) * this.height;
+      if (Math.min(Math.abs(y - hi), Math.abs(y - lo)) < room) return;
       marks.push(svg('text', { x: 0, y: y + 3.5 }, text));
     };
     if (this.log) {
@@ -224,17 +237,17 @@ export class ToneEdge {
 
   drawBars() {
     if (!this.counts || !this.height) return this.bars.setAttribute('d', '');
-    const n = Math.max(Math.round(this.height / 2), 1);
-    const rows = new Float64Array(n);
-    this.counts.forEach((c, i) => (rows[Math.min(Math.floor(((BINS - 1 - i) / BINS) * n), n - 1)] += c));
-    const most = rows.reduce((a, b) => Math.max(a, b), 0) || 1;
+    // Few pixels in view make coarse bins.
+    const total = this.counts.reduce((a, b) => a + b, 0);
+    const merge = Math.max(Math.round(this.counts.length / Math.max(2 * Math.sqrt(total), 12)), 1);
+    const bars = Array.from({ length: Math.ceil(this.counts.length / merge) }, (_, i) => this.counts.slice(i * merge, (i + 1) * merge).reduce((a, b) => a + b, 0));
+    const most = Math.max(...bars) || 1;
+    const [first, last] = this.counted;
     const right = this.width;
     const reach = this.width * 0.62;
-    let d = `M${right} 0`;
-    rows.forEach((c, i) => {
-      const x = (right - reach * Math.sqrt(c / most)).toFixed(1);
-      d += `V${((i / n) * this.height).toFixed(1)}H${x}V${(((i + 1) / n) * this.height).toFixed(1)}`;
-    });
+    const y = (i) => (((this.top - first - ((i * merge) / this.counts.length) * (last - first)) / this.span) * this.height).toFixed(1);
+    let d = `M${right} ${y(0)}`;
+    bars.forEach((n, i) => (d += `H${(right - reach * Math.sqrt(n / most)).toFixed(1)}V${y(i + 1)}`));
     this.bars.setAttribute('d', `${d}H${right}Z`);
   }
 

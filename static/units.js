@@ -99,7 +99,7 @@ export function measures(view, epoch) {
   return list;
 }
 
-/** Named units of a scale, coarse to fine: how much of the base unit, how written. */
+/** Named units of a scale, coarse to fine: how much of the base unit, how written. @type {Record<string, [number, string][]>} */
 const STEPS = {
   length: [[1e3, ' Gpc'], [1, ' Mpc'], [1e-3, ' kpc'], [1e-6, ' pc']],
   angle: [[3600, '°'], [60, '′'], [1, '″'], [1e-3, ' mas']],

@@ -30,9 +30,9 @@ const TABLES = {
     depth_slide: 'Depth window',
     depth_whole: 'whole depth',
     depth_whole_title: 'Open the window over all slabs (\\)',
-    depth_reading: '{axis} {a} to {b} {unit}',
+    depth_reading: '{axis} {a} – {b} {unit}',
     depth_all: 'all {axis}',
-    depth_share: '{share} % of {total}',
+    depth_share: '{share} % of it all',
 
     scale: 'Scale',
     scale_thumb: 'Width in view',
@@ -129,4 +129,4 @@ export function say(key, fill = {}) {
 }
 
 /** The keys and what they do. @returns {[string, string][]} */
-export const keyList = () => table.key_list;
+export const keyList = () => /** @type {[string, string][]} */ (table.key_list);

@@ -1,0 +1,90 @@
+// Far in, where a pixel of the file is wide enough, its number is written on it. In: view, tiles. Out: lines and numbers
+// on the canvas of the markers.
+
+import { shade, step } from './lut.js';
+import { ramp } from './ramps.js';
+import { number } from './units.js';
+
+/** Sides of a pixel, CSS pixels, from which lines are drawn and from which numbers are written. */
+const LINES = 32;
+const NUMBERS = 64;
+
+export class PixelGrid {
+  /** @param {import('./map.js').MapSurface} map @param {() => void} wake */
+  constructor(map, wake) {
+    this.map = map;
+    this.wake = wake;
+    this.key = '';
+    /** @type {{x: number, y: number, values: Float64Array, across: number}[]} pixel of level 0 at which a block begins */
+    this.blocks = [];
+  }
+
+  /** @param {CanvasRenderingContext2D} context @param {import('./view.js').View} view */
+  draw(context, view) {
+    const layer = this.map.front?.layer;
+    const side = layer ? layer.atlas.pixel * view.scale : 0;
+    if (side < LINES) return;
+    const { atlas } = layer;
+    const [columns, rows] = atlas.size(0);
+    const clip = (x, top) => Math.min(Math.max(x, 0), top);
+    const x0 = clip(Math.floor((view.bounds.u0 - atlas.view.u[0]) / atlas.pixel), columns);
+    const x1 = clip(Math.ceil((view.bounds.u1 - atlas.view.u[0]) / atlas.pixel), columns);
+    const y0 = clip(Math.floor((atlas.view.v[1] - view.bounds.v1) / atlas.pixel), rows);
+    const y1 = clip(Math.ceil((atlas.view.v[1] - view.bounds.v0) / atlas.pixel), rows);
+    const [left, top] = view.apply(atlas.view.u[0], atlas.view.v[1]);
+    context.strokeStyle = `rgb(0 0 0 / ${Math.min((side - LINES) / LINES, 1) * 0.35})`;
+    context.lineWidth = 1;
+    context.beginPath();
+    for (let x = x0; x <= x1; x++) {
+      context.moveTo(left + x * side, top + y0 * side);
+      context.lineTo(left + x * side, top + y1 * side);
+    }
+    for (let y = y0; y <= y1; y++) {
+      context.moveTo(left + x0 * side, top + y * side);
+      context.lineTo(left + x1 * side, top + y * side);
+    }
+    context.stroke();
+    if (side < NUMBERS) return;
+    const key = [layer.id, x0, x1, y0, y1].join();
+    if (key !== this.key) this.fetch(key, layer, x0, x1, y0, y1);
+    context.textAlign = 'center';
+    context.textBaseline = 'middle';
+    context.font = `${Math.round(side / 6.2)}px system-ui, sans-serif`;
+    const tone = this.map.front.painted;
+    const colours = ramp(tone.ramp);
+    for (const { x, y, values, across } of this.blocks) {
+      values.forEach((value, i) => {
+        if (Number.isNaN(value)) return;
+        const [cx, cy] = [left + (x + (i % across) + 0.5) * side, top + (y + Math.floor(i / across) + 0.5) * side];
+        const text = number(value, 3).replace(' × ', '×');
+        const k = 3 * step(shade(value, tone));
+        context.fillStyle = colours[k] + 2 * colours[k + 1] + colours[k + 2] > 460 ? '#08090c' : '#f4f2ec';
+        context.fillText(text, cx, cy);
+      });
+    }
+  }
+
+  /** @param {string} key @param {import('./atlas.js').Layer} layer @param {number} x0 @param {number} x1 @param {number} y0 @param {number} y1 */
+  async fetch(key, layer, x0, x1, y0, y1) {
+    this.key = key;
+    const { tile } = layer.atlas;
+    const reads = [];
+    for (let row = Math.floor(y0 / tile); row * tile < y1; row++) {
+      for (let column = Math.floor(x0 / tile); column * tile < x1; column++) {
+        const [x, y] = [Math.max(x0, column * tile), Math.max(y0, row * tile)];
+        const [across, down] = [Math.min(x1, (column + 1) * tile) - x, Math.min(y1, (row + 1) * tile) - y];
+        reads.push(
+          this.map.tiles
+            .read(layer.key(0, row, column), x - column * tile, y - row * tile, across, down)
+            .then((values) => (values ? { x, y, values, across } : null)),
+        );
+      }
+    }
+    const blocks = await Promise.all(reads);
+    if (this.key !== key) return;
+    this.blocks = blocks.filter((b) => b !== null);
+    // A tile that is not there yet is asked for again at the next frame.
+    if (this.blocks.length < blocks.length) this.key = '';
+    this.wake();
+  }
+}

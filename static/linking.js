@@ -1,0 +1,60 @@
+// Keeps the address of the page in step with the view, and the view with the address. In: view and state; a link that was
+// followed or typed. Out: the address, a word that copies it.
+
+import { make } from './dom.js';
+import { read, settled, write } from './link.js';
+import { say } from './words.js';
+
+export class Linking {
+  /** @param {import('./app.js').Frame} frame */
+  constructor(frame) {
+    this.frame = frame;
+    this.timer = 0;
+    this.word = make('button.word.act', { type: 'button', click: () => this.copy() }, say('link_copy'));
+    addEventListener('hashchange', () => this.follow(true));
+  }
+
+  /** The address follows when things have come to rest. */
+  soon() {
+    clearTimeout(this.timer);
+    this.timer = window.setTimeout(() => this.write(), 250);
+  }
+
+  write() {
+    const { motion, hand, state } = this.frame;
+    if (motion.moving || hand.classList.contains('moving')) return this.soon();
+    const { view } = motion;
+    const snapped = motion.limits.clamp(view.with(settled(view)));
+    if (!snapped.equals(view)) {
+      // The view becomes exactly what the link says; the difference is below a hundredth of a pixel.
+      motion.view = snapped;
+      this.frame.wake();
+    }
+    const link = write({ ...settled(snapped), ...state.toLink() });
+    if (link !== location.hash) history.replaceState(history.state, '', link);
+  }
+
+  /** Goes where the address says. @param {boolean} fly */
+  follow(fly) {
+    const { motion, state, status } = this.frame;
+    const { view: link, bad } = read(location.hash);
+    const trouble = state.fromLink(link);
+    if (bad.length) trouble.push(['trouble_link', { part: bad[0] }]);
+    const said = link.u !== undefined || link.v !== undefined || link.width !== undefined;
+    const goal = said ? motion.view.with(link) : motion.limits.filled(motion.view);
+    if (fly) motion.fly(goal);
+    else motion.jump(goal);
+    for (const [key, fill] of trouble) status.say(say(key, fill), { stay: 9000 });
+  }
+
+  async copy() {
+    const { motion, hand, status } = this.frame;
+    motion.stop();
+    hand.classList.remove('moving');
+    this.write();
+    const done = await navigator.clipboard?.writeText(location.href).then(() => true, () => false);
+    this.word.textContent = done ? say('link_copied') : say('link_copy');
+    if (!done) status.say(say('link_shown'));
+    setTimeout(() => (this.word.textContent = say('link_copy')), 2000);
+  }
+}

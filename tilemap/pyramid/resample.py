@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 import numpy as np
 from numpy.typing import NDArray
 from scipy import sparse
@@ -55,6 +57,18 @@ def overlaps(
     return weights, inside
 
 
+@dataclass(frozen=True)
+class _Part:
+    """The old pixels of one tile along one axis: the new ones that they touch, and by how much; None where one to one."""
+
+    at: NDArray[np.intp]
+    weights: sparse.csr_matrix | None
+
+    def apply(self, old: NDArray[np.float64]) -> NDArray[np.float64]:
+        """New pixels from old ones, along the first axis."""
+        return old if self.weights is None else self.weights @ old
+
+
 class Canvas:
     """New pixels being filled from tiles of old ones, of which each is given once.
 
@@ -65,18 +79,26 @@ class Canvas:
     """
 
     def __init__(self, rows: sparse.csc_matrix, columns: sparse.csc_matrix) -> None:
-        self._rows = rows
-        self._columns = columns
+        self._axes = (rows, columns)
+        self._parts: dict[tuple[int, int, int], _Part] = {}
         self.values = np.zeros((rows.shape[0], columns.shape[0]))
 
     def add(self, tile: NDArray[np.floating], row: int, column: int) -> None:
         """Add a tile whose top left pixel is old pixel (row, column); what lies beyond the old image is left out."""
-        height = min(tile.shape[0], self._rows.shape[1] - row)
-        width = min(tile.shape[1], self._columns.shape[1] - column)
-        rows, at_rows = _used(self._rows[:, row : row + height])
-        columns, at_columns = _used(self._columns[:, column : column + width])
-        part = rows @ (columns @ tile[:height, :width].T.astype(np.float64)).T
-        self.values[np.ix_(at_rows, at_columns)] += part
+        height = min(tile.shape[0], self._axes[0].shape[1] - row)
+        width = min(tile.shape[1], self._axes[1].shape[1] - column)
+        rows, columns = self._part(0, row, height), self._part(1, column, width)
+        part = rows.apply(columns.apply(tile[:height, :width].T.astype(np.float64)).T)
+        if _in_a_row(rows.at) and _in_a_row(columns.at):
+            self.values[rows.at[0] : rows.at[-1] + 1, columns.at[0] : columns.at[-1] + 1] += part
+        else:
+            self.values[np.ix_(rows.at, columns.at)] += part
+
+    def _part(self, axis: int, start: int, count: int) -> _Part:
+        key = (axis, start, count)
+        if key not in self._parts:
+            self._parts[key] = _used(self._axes[axis][:, start : start + count])
+        return self._parts[key]
 
 
 def tiles_used(weights: sparse.csc_matrix, tile: int) -> list[int]:
@@ -85,8 +107,18 @@ def tiles_used(weights: sparse.csc_matrix, tile: int) -> list[int]:
     return np.unique(used // tile).tolist()
 
 
-def _used(weights: sparse.csc_matrix) -> tuple[sparse.csr_matrix, NDArray[np.intp]]:
-    """The rows of a matrix that are not all zero, and which they are."""
+def _used(weights: sparse.csc_matrix) -> _Part:
     by_row = weights.tocsr()
+    by_row.sum_duplicates()
     at = np.flatnonzero(np.diff(by_row.indptr))
-    return by_row[at], at
+    by_row = by_row[at]
+    one_to_one = (
+        by_row.shape[0] == by_row.shape[1] == by_row.nnz
+        and np.array_equal(by_row.indices, np.arange(by_row.nnz))
+        and bool((by_row.data == 1.0).all())
+    )
+    return _Part(at, None if one_to_one else by_row)
+
+
+def _in_a_row(at: NDArray[np.intp]) -> bool:
+    return bool(at.size and at[-1] - at[0] + 1 == at.size)

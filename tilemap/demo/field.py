@@ -145,20 +145,28 @@ def smoothed(modes: NDArray[np.complex64], box: float, radius: float) -> Field:
     return scipy.fft.irfftn(modes * window, s=(n, n, n), workers=-1, overwrite_x=True)
 
 
-def inverse_gradient(modes: NDArray[np.complex64], box: float) -> list[Field]:
+def inverse_gradient(modes: NDArray[np.complex64], box: float, on_mesh: bool = False) -> list[Field]:
     """Three fields (n, n, n) in Mpc whose divergence is minus the contrast of `modes`: i k / k^2 times the modes.
 
     Of the initial contrast this is the displacement of Zel'dovich (1970, A&A 5, 84); of any contrast it is the
-    gravitational pull in units of 3/2 Omega_m H0^2 / a.
+    gravitational pull in units of 3/2 Omega_m H0^2 / a. `on_mesh` takes the slope over four and the curvature over three
+    neighbouring cells instead (Hockney & Eastwood 1981), which does not ring around single particles.
     """
     n = modes.shape[0]
+    cell = box / n
     axes = wave_numbers(n, box)
-    square = axes[0] ** 2 + axes[1] ** 2 + axes[2] ** 2
-    square[0, 0, 0] = 1.0
-    scaled = modes / square
-    fields = []
-    for axis in axes:
-        # The Nyquist plane has no sign, hence no gradient.
-        along = np.where(np.abs(axis) >= np.pi * n / box * (1 - 1e-6), 0.0, axis).astype(np.float32)
-        fields.append(scipy.fft.irfftn(1j * along * scaled, s=(n, n, n), workers=-1, overwrite_x=True))
-    return fields
+    if on_mesh:
+        slopes = [(8.0 * np.sin(k * cell) - np.sin(2.0 * k * cell)) / (6.0 * cell) for k in axes]
+        squares = [(2.0 / cell * np.sin(0.5 * k * cell)) ** 2 for k in axes]
+    else:
+        # The Nyquist plane has no sign, hence no slope.
+        slopes = [np.where(np.abs(k) >= np.pi / cell * (1 - 1e-6), 0.0, k) for k in axes]
+        squares = [k**2 for k in axes]
+    inverse = squares[0] + squares[1] + squares[2]
+    inverse[0, 0, 0] = 1.0
+    np.reciprocal(inverse, out=inverse)
+    scaled = modes * inverse
+    return [
+        scipy.fft.irfftn(scaled * (1j * slope).astype(np.complex64), s=(n, n, n), workers=-1, overwrite_x=True)
+        for slope in slopes
+    ]

@@ -83,7 +83,7 @@ def make_galaxies(halos: Halos, redshift: float, age_gyr: float, cosmos: Cosmos,
     # Dwarfs are puffy all through.
     bulge_share = np.where(big, 0.9, np.where(safe < 3e8, 1.0, bulge_share))
     bulge = stars * bulge_share
-    spin = np.clip(0.065 * np.exp(0.4 * rng.standard_normal(count)), 0.035, 0.14)
+    spin = np.clip(0.072 * np.exp(0.4 * rng.standard_normal(count)), 0.035, 0.14)
     gas_disc = spin / np.sqrt(2.0) * halos.radius
     return Galaxies(
         stars=stars,

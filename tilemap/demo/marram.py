@@ -10,6 +10,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
+import scipy.fft
 
 from tilemap.cosmology import Cosmology
 from tilemap.demo import discs
@@ -66,7 +67,7 @@ def invent(seed: int = SEED, scale: float = 1.0, progress: Progress | None = Non
     tell(0.0)
     cosmos = Cosmos()
     a = 1.0 / (1.0 + REDSHIFT)
-    n = max(16, 2 * round(LATTICE * np.cbrt(scale) / 2))
+    n = max(16, 2 * scipy.fft.next_fast_len(round(LATTICE * np.cbrt(scale) / 2), real=True))
     rng = np.random.default_rng([VERSION, seed])
     modes = gaussian_field(n, BOX, Spectrum(cosmos), rng)
     displacement, velocity = evolve(modes, BOX, cosmos, a, tell=lambda share: tell(0.45 * share))

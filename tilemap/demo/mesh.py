@@ -133,7 +133,8 @@ def evolve(
         """a^3 E dD/da: the momentum of a unit displacement in linear theory."""
         return float(a**2 * cosmos.expansion(a) * cosmos.growth(a) * cosmos.growth_rate(a))
 
-    start = lattice(n) * np.float32(mesh_factor)
+    # Half way between cell centres each particle fills its cells evenly: the lattice itself leaves no trace in the pull.
+    start = lattice(n) * np.float32(mesh_factor) + np.float32(0.5)
     position = start + psi * np.float32(cosmos.growth(a_start) / cell)
     p = psi * np.float32(momentum(a_start))
     stops = np.linspace(a_start, a_end, steps + 1)
@@ -142,7 +143,7 @@ def evolve(
         contrast = deposit(position, fine)
         contrast *= np.float32((fine / n) ** 3)
         factor = np.float32((momentum(a_to) - momentum(a_from)) / cosmos.growth(at))
-        pull = inverse_gradient(scipy.fft.rfftn(contrast, workers=-1, overwrite_x=True), box)
+        pull = inverse_gradient(scipy.fft.rfftn(contrast, workers=-1, overwrite_x=True), box, on_mesh=True)
         for axis in range(3):
             p[:, axis] += factor * gather(pull[axis], position)
 

@@ -23,13 +23,13 @@ SECONDS_IN_YEAR = 3.15576e7  # Julian
 LIGHTEST_OBJECT = 5e9  # Msun
 
 # dataset: (stored type, to cgs, power of a, power of h, powers of length, mass and velocity, description)
-FIELDS: dict[str, tuple[str, float, float, float, tuple[int, int, int], str]] = {
+FIELDS: dict[str, tuple[str, float, float, float, tuple[int, int, int] | None, str]] = {
     "Coordinates": ("f4", CM_IN_KPC, 1, -1, (1, 0, 0), "comoving position in the box, kpc/h"),
     "Velocities": ("f4", 1e5, 0.5, 0, (0, 0, 1), "peculiar velocity over the root of the scale factor, km/s"),
     "Masses": ("f4", 1e10 * GRAM_IN_MSUN, 0, -1, (0, 1, 0), "mass, 1e10 Msun/h"),
     "ParticleIDs": ("u8", 1.0, 0, 0, (0, 0, 0), "number of the particle, unique over all species"),
     "SmoothingLength": ("f4", CM_IN_KPC, 1, -1, (1, 0, 0), "comoving radius at which the kernel ends, kpc/h"),
-    "Temperature": ("f4", 1.0, 0, 0, (0, 0, 0), "temperature, K"),
+    "Temperature": ("f4", 1.0, 0, 0, None, "temperature, K"),
     "StarFormationRate": (
         "f4",
         GRAM_IN_MSUN / SECONDS_IN_YEAR,
@@ -91,14 +91,14 @@ def write_snapshot(
 
 
 def _write_dataset(group: h5py.Group, name: str, values: np.ndarray) -> None:
-    kind, to_cgs, a_power, h_power, (length, mass, velocity), text = FIELDS[name]
+    kind, to_cgs, a_power, h_power, powers, text = FIELDS[name]
     dataset = group.create_dataset(name, data=values.astype(kind, copy=False))
     dataset.attrs["to_cgs"] = to_cgs
     dataset.attrs["a_scaling"] = float(a_power)
     dataset.attrs["h_scaling"] = float(h_power)
-    dataset.attrs["length_scaling"] = float(length)
-    dataset.attrs["mass_scaling"] = float(mass)
-    dataset.attrs["velocity_scaling"] = float(velocity)
+    if powers is not None:  # kelvin is no product of these three
+        for base, power in zip(("length", "mass", "velocity"), powers, strict=True):
+            dataset.attrs[f"{base}_scaling"] = float(power)
     dataset.attrs["description"] = text
 
 
@@ -209,11 +209,12 @@ def invented_names(centre: Floats, box: float) -> list[str]:
     `centre` (k, 3) in Mpc is in order of rank. Names are sounds, chosen by the block's number.
     """
     block = np.minimum((centre * (_REGIONS / box)).astype(int), _REGIONS - 1)
-    number = (block[:, 0] * _REGIONS + block[:, 1]) * _REGIONS + block[:, 2]
-    seen: dict[int, int] = {}
+    seen: dict[str, int] = {}
     names = []
-    for each in number.tolist():
-        seen[each] = seen.get(each, 0) + 1
-        # 5 has no factor with 16, 3 none with 8: every block gets another pair.
-        names.append(f"{_HEADS[each * 5 % 16]}{_TAILS[(each // 16 * 2 + each % 2 + each // 8 * 3) % 8]} {seen[each]}")
+    for i, j, k in block.tolist():
+        # A head for every column along the line of sight, so that what is drawn together sounds alike; 16 and 8 give
+        # every block a pair of its own.
+        region = _HEADS[(5 * (4 * i + j)) % 16] + _TAILS[k + 4 * ((i + j) % 2)]
+        seen[region] = seen.get(region, 0) + 1
+        names.append(f"{region} {seen[region]}")
     return names

@@ -17,6 +17,12 @@ Figure = dict[str, Any]
 # name -> module:function; the function yields figures whose names begin with the bench's name.
 BENCHES = {
     "first": "first:demo_build",
+    "engine/whole": "engine:whole",
+    "engine/splat": "engine:splat",
+    "engine/cycle": "engine:cycle",
+    "engine/growth": "engine:growth",
+    "engine/cores": "engine:cores",
+    "engine/tiles": "engine:tiles",
 }
 
 
@@ -41,7 +47,7 @@ def main(arguments: list[str]) -> int:
         module, function = BENCHES[bench].split(":")
         run: Callable[[], Iterator[Figure]] = getattr(importlib.import_module(module), function)
         for line in run():
-            if line["name"].startswith(wanted):
+            if line["name"].startswith(wanted) or bench.startswith(wanted):
                 print(json.dumps(line), flush=True)
     return 0
 

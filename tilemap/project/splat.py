@@ -94,6 +94,7 @@ def _row_drawer(width: int):
 _draw_rows_16 = _row_drawer(16)
 _draw_rows_24 = _row_drawer(24)
 _draw_rows_32 = _row_drawer(32)
+_draw_rows_40 = _row_drawer(40)
 
 
 @njit(**_FAST)
@@ -224,8 +225,10 @@ def _draw(image, channels, records, order, scale, value, cumulative, table):
                 rest = _draw_rows_16(image, channels, x, y, r, first, second, table)
             elif r * r <= np.float32(11.5 * 11.5 - REACH):
                 rest = _draw_rows_24(image, channels, x, y, r, first, second, table)
-            else:
+            elif r * r <= np.float32(15.5 * 15.5 - REACH):
                 rest = _draw_rows_32(image, channels, x, y, r, first, second, table)
+            else:
+                rest = _draw_rows_40(image, channels, x, y, r, first, second, table)
             _give(image, channels, x, y, first * rest, second * rest)
         else:
             _draw_wide(image, channels, x, y, r, first, second, table)

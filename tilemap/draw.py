@@ -113,7 +113,7 @@ class SpeciesDrawing:
             SheetWriter(folder / sheet.name, (plan.rows, plan.columns), plan.slabs, coding)
             for sheet, coding in zip(sheets, codings, strict=True)
         ]
-        bases = list(self.runner.map(lambda slab: self.cycle.base(self.buckets, slab), range(plan.slabs)))
+        bases = [self.cycle.base(self.buckets, slab, self.runner) for slab in range(plan.slabs)]
         # What the regions leave behind: the image at level `local`, from which the coarser ones are halved.
         stacks = plan.slabs + (plan.slabs > 1)
         coarse = np.zeros((stacks, len(self.planes.quantities), *plan.size(plan.local)), dtype=np.float32)

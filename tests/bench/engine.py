@@ -122,13 +122,15 @@ class _Loose:
     def project(self) -> np.ndarray:
         from tilemap.project.scatter import Buckets
         from tilemap.project.vcycle import Cycle
+        from tilemap.runners.local import LocalRunner
 
         buckets = Buckets(self.camera, self.plan)
         for start in range(0, len(self.position), 1 << 19):
             part = slice(start, start + (1 << 19))
             buckets.add(*buckets.route(self.position[part], self.radius[part], self.values[part]))
         cycle = Cycle(self.plan, 1, _stamps())
-        base = cycle.base(buckets, 0)
+        with LocalRunner(1) as runner:
+            base = cycle.base(buckets, 0, runner)
         if self.plan.local == 0:
             margin = (base.shape[1] - self.plan.rows) // 2
             return base[0, margin:-margin, margin:-margin]

@@ -226,10 +226,8 @@ class Buckets:
         for key in np.flatnonzero(np.diff(starts)):
             self._parts[key].append(records[starts[key] : starts[key + 1]])
 
-    def take(self, region: int, slab: int, level: int) -> NDArray[np.float32] | None:
-        """Remove and return the records of a bucket, None where it is empty."""
+    def take(self, region: int, slab: int, level: int) -> list[NDArray[np.float32]]:
+        """Remove and return the records of a bucket, in pieces of float32 (n, 3 + channels); none where it is empty."""
         key = self.plan.key(region, slab, level)
         parts, self._parts[key] = self._parts[key], []
-        if not parts:
-            return None
-        return parts[0] if len(parts) == 1 else np.concatenate(parts)
+        return parts

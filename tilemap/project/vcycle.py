@@ -16,9 +16,12 @@ from numpy.typing import NDArray
 from tilemap.project.scatter import PAD, Buckets, Plan
 from tilemap.project.splat import MARGIN, cell_order, draw
 from tilemap.project.stamps import Stamps
+from tilemap.runners.local import LocalRunner
 
-CELL_PX = 64
-"""Particles are drawn cell by cell of this size, so that the pixels they touch stay in cache."""
+CELL_PX = 48
+"""Particles are drawn cell by cell of this size, so that the pixels they touch stay in cache. It is also the height of
+the bands that workers share out: a stamp reaches at most 17 pixels out of its band, so two bands of the same parity
+touch no pixel together."""
 
 # One row of weights gives the left (upper) child of a coefficient from those 2 before it to 2 after it; mirrored, the
 # right one. Two-scale relation of the quartic B-spline between pixel grids: binomials of 5 over 16.
@@ -80,14 +83,39 @@ class Cycle:
         corner = MARGIN - reach
         _refine(coarse, inside, corner, corner, rows, columns, TWO_SCALE if level else TWO_SCALE_AVERAGED)
 
-    def _draw_into(self, image: NDArray[np.float32], records: NDArray[np.float32] | None, level: int) -> None:
-        if records is None:
+    def _draw_into(self, image: NDArray[np.float32], parts: list[NDArray[np.float32]], level: int) -> None:
+        if not parts:
             return
+        records = parts[0] if len(parts) == 1 else np.concatenate(parts)
         scale = 1.0 / (1 << level)
         order, _ = cell_order(records, scale, CELL_PX, (image.shape[1] - 2 * MARGIN, image.shape[2] - 2 * MARGIN))
         draw(image, records, order, scale, self.stamps, finest=level == 0)
 
-    def base(self, buckets: Buckets, slab: int) -> NDArray[np.float32]:
+    def _draw_shared(
+        self, image: NDArray[np.float32], parts: list[NDArray[np.float32]], level: int, runner: LocalRunner
+    ) -> None:
+        """The same with all workers on one image: bands of even number, then those of odd, whoever draws them."""
+        scale = 1.0 / (1 << level)
+        size = image.shape[1] - 2 * MARGIN, image.shape[2] - 2 * MARGIN
+        sorted_parts = list(runner.map(lambda records: cell_order(records, scale, CELL_PX, size), parts))
+        if not parts:
+            return
+
+        def draw_bands(bands: range) -> None:
+            for band in bands:
+                for records, (order, starts) in zip(parts, sorted_parts, strict=True):
+                    ours = order[starts[band] : starts[band + 1]]
+                    draw(image, records, ours, scale, self.stamps, finest=level == 0)
+
+        count = len(sorted_parts[0][1]) - 1
+        if level == self.plan.top:  # where kernels may be wider than a band
+            draw_bands(range(count))
+            return
+        for parity in (0, 1):
+            for _ in runner.map(draw_bands, [range(band, band + 1) for band in range(parity, count, 2)]):
+                pass
+
+    def base(self, buckets: Buckets, slab: int, runner: LocalRunner) -> NDArray[np.float32]:
         """The image of a slab at level `plan.local`, from everything drawn at that level and coarser ones.
 
         Returns
@@ -99,7 +127,7 @@ class Cycle:
             finer = self._empty(self.plan.size(level))
             if image is not None:
                 self._refine_into(image, finer, level)
-            self._draw_into(finer, buckets.take(-1, slab, level), level)
+            self._draw_shared(finer, buckets.take(-1, slab, level), level, runner)
             image = finer
         assert image is not None
         return image
@@ -134,7 +162,7 @@ class Cycle:
             column * tile : column * tile + columns + 2 * MARGIN,
         ]
         records = [buckets.take(region, slab, level) for level in range(plan.local)]
-        if not image.any() and all(part is None for part in records):
+        if not image.any() and not any(records):
             return np.zeros((self.channels, rows << plan.local, columns << plan.local), dtype=np.float32), False
         for level in range(plan.local - 1, -1, -1):
             rows, columns = rows * 2, columns * 2

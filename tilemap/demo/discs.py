@@ -159,7 +159,7 @@ def stars(galaxies: Galaxies, halos: Halos, total: int, a: float, box: float, rn
     # Light outside the disc and bulge: a few per cent, more in the heaviest galaxies, as accreted stars are.
     outer = galaxies.stars * np.clip(0.03 + 0.05 * np.log10(np.maximum(galaxies.stars, 1.0) / 1e10), 0.02, 0.15)
     outer = np.where(satellite | (galaxies.stars < 1e9), 0.0, outer)
-    stream = np.where(satellite & (galaxies.stars > 3e7), 0.15 * galaxies.stars, 0.0)
+    stream = np.where(satellite & (galaxies.stars > 3e7), 0.1 * galaxies.stars, 0.0)
     bulge = np.clip(galaxies.bulge - np.where(galaxies.bulge > 0.5 * galaxies.stars, outer + stream, 0.0), 0.0, None)
     disc = np.clip(galaxies.stars - bulge - outer - stream, 0.0, None)
     disc[disc < 1e-9 * galaxies.stars] = 0.0

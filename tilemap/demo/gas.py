@@ -134,7 +134,9 @@ def settle_gas(
     loose = 0.25 + 1.0 / (1.0 + (halos.mass[index] / 1e11) ** 0.5)
     direction = offset / distance[:, None] + loose[:, None] * random_directions(len(index), rng)
     direction /= np.linalg.norm(direction, axis=1, keepdims=True)
-    scaled = hot_radius(rank_share(index, distance))
+    # No halo ends at a sphere.
+    ragged = 1.0 + 0.22 * ripple(direction, phase[index])
+    scaled = hot_radius(rank_share(index, distance)) * ragged
     drawn.position[chosen] = halos.centre[index] + direction * (scaled * halos.radius[index])[:, None]
     hot = (
         virial[index] * 1.5 / (1.0 + scaled) * np.exp(0.25 * ripple(direction * (1.0 + scaled[:, None]), phase[index]))

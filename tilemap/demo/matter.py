@@ -19,6 +19,7 @@ from tilemap.demo.mesh import gather
 from tilemap.demo.profiles import circular_speed, nfw_radius
 
 FINEST = 8  # the draw is this many times denser in the densest parts than in the emptiest
+SHAKE = 0.2  # in lattice steps
 _LATE = np.array([0, 4, 2, 6, 1, 5, 3, 7])  # bit-reversed: any first few of them are spread evenly
 _PLASTIC = 1.2207440846057596  # real root of x^4 = x + 1
 
@@ -76,6 +77,7 @@ def draw(
     velocity: list[Field],
     box: float,
     total_mass: float,
+    rng: np.random.Generator,
 ) -> Drawn:
     """Draw particles in the lattice.
 
@@ -99,6 +101,8 @@ def draw(
         # A Kronecker sequence on the golden ratio's sibling in three dimensions: even, periodic, and along no axis.
         i = np.arange(phase, FINEST * count, FINEST, dtype=np.float64)
         at = np.stack([((i * step + shift) % 1.0) * n for step in steps], axis=-1).astype(np.float32)
+        # Shaken a little, so that where a slab cuts a thin sheet of matter its rows do not show as stripes.
+        at += np.float32(SHAKE) * rng.standard_normal(at.shape, dtype=np.float32)
         nearest = np.rint(at).astype(np.int32) % n
         flat = (nearest[:, 0] * n + nearest[:, 1]) * n + nearest[:, 2]
         wanted = fineness.reshape(-1)[flat] > late
@@ -200,7 +204,7 @@ def along_orbit(
     swing, start = 0.35 + 0.35 * oval[index], 2.0 * np.pi * phase[index]
     radius = r0 * (1.0 + swing * np.cos(0.7 * angle + start)) / (1.0 + swing * np.cos(start))
     radius *= 1.0 - 0.06 * np.sign(angle)  # what leads has fallen inward, what trails has been flung out
-    width = 0.06 * halos.radius[index] * (1.0 + np.abs(angle))
+    width = 0.05 * halos.radius[index] * (1.0 + np.abs(angle))
     around = outward * np.cos(angle)[:, None] + forward * np.sin(angle)[:, None]
     position = halos.centre[host] + around * radius[:, None] + width[:, None] * rng.standard_normal((len(index), 3))
     ahead = forward * np.cos(angle)[:, None] - outward * np.sin(angle)[:, None]

@@ -35,6 +35,8 @@ def _refine(coarse, fine, corner_row, corner_column, rows, columns, weights):
     """Add to `fine` (2 rows, 2 columns) what the coarse pixels [0, rows) x [0, columns) from the corner on become."""
     w0, w1, w2, w3, w4 = weights[0], weights[1], weights[2], weights[3], weights[4]
     line = np.empty(columns + 4, dtype=np.float32)
+    # Two plain loops and one that interleaves run a third faster than one that does it all.
+    left, right = np.empty(columns, dtype=np.float32), np.empty(columns, dtype=np.float32)
     for channel in range(coarse.shape[0]):
         for i in range(2 * rows):
             row = corner_row + i // 2
@@ -49,11 +51,14 @@ def _refine(coarse, fine, corner_row, corner_column, rows, columns, weights):
             else:
                 for j in range(columns + 4):
                     line[j] = w4 * a[j] + w3 * b[j] + w2 * c[j] + w1 * d[j] + w0 * e[j]
+            for j in range(columns):
+                left[j] = w0 * line[j] + w1 * line[j + 1] + w2 * line[j + 2] + w3 * line[j + 3] + w4 * line[j + 4]
+            for j in range(columns):
+                right[j] = w4 * line[j] + w3 * line[j + 1] + w2 * line[j + 2] + w1 * line[j + 3] + w0 * line[j + 4]
             out = fine[channel, i]
             for j in range(columns):
-                p, q, r, s, t = line[j], line[j + 1], line[j + 2], line[j + 3], line[j + 4]
-                out[2 * j] += w0 * p + w1 * q + w2 * r + w3 * s + w4 * t
-                out[2 * j + 1] += w4 * p + w3 * q + w2 * r + w1 * s + w0 * t
+                out[2 * j] += left[j]
+                out[2 * j + 1] += right[j]
 
 
 class Cycle:

@@ -11,6 +11,7 @@ from tilemap.project.camera import AXES, Camera
 from tilemap.project.scatter import Buckets, Plan, make_plan
 from tilemap.project.stamps import stamps_for
 from tilemap.project.vcycle import Cycle
+from tilemap.runners.local import LocalRunner
 
 KERNELS = ("cubic", "quartic", "quintic", "wendland-c2", "wendland-c4", "wendland-c6")
 
@@ -46,8 +47,9 @@ def draw(
     local: int | None = None,
     top: int | None = None,
     chunk: int | None = None,
+    workers: int = 2,
 ) -> np.ndarray:
-    """The image, float32 (slabs, channels, rows, columns); `local`, `top` and `chunk` override how work is cut."""
+    """The image, float32 (slabs, channels, rows, columns); `local`, `top`, `chunk`, `workers` override how work is cut."""
     position = np.atleast_2d(np.asarray(position, dtype=np.float64))
     count = len(position)
     radius = np.array(np.broadcast_to(np.asarray(radius, dtype=np.float64), count))
@@ -63,7 +65,8 @@ def draw(
     cycle = Cycle(plan, values.shape[1], stamps_for(kernel))
     out = np.zeros((plan.slabs, values.shape[1], plan.rows, plan.columns), dtype=np.float32)
     for slab in range(plan.slabs):
-        base = cycle.base(buckets, slab)
+        with LocalRunner(workers) as runner:
+            base = cycle.base(buckets, slab, runner)
         for region in range(plan.regions[0] * plan.regions[1]):
             row, column = (index * plan.region_px for index in divmod(region, plan.regions[1]))
             image, _ = cycle.region(buckets, base, region, slab)

@@ -21,7 +21,9 @@ NODES = 65537
 SHAPES = {
     "cubic": lambda q: np.where(q < 0.5, 1 - 6 * q**2 + 6 * q**3, 2 * np.maximum(1 - q, 0) ** 3),
     "quartic": lambda q: (
-        np.maximum(2.5 - 2.5 * q, 0) ** 4 - 5 * np.maximum(1.5 - 2.5 * q, 0) ** 4 + 10 * np.maximum(0.5 - 2.5 * q, 0) ** 4
+        np.maximum(2.5 - 2.5 * q, 0) ** 4
+        - 5 * np.maximum(1.5 - 2.5 * q, 0) ** 4
+        + 10 * np.maximum(0.5 - 2.5 * q, 0) ** 4
     ),
     "quintic": lambda q: (
         np.maximum(3 - 3 * q, 0) ** 5 - 6 * np.maximum(2 - 3 * q, 0) ** 5 + 15 * np.maximum(1 - 3 * q, 0) ** 5

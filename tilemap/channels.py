@@ -51,15 +51,20 @@ class SheetPlan:
     factor: float
     total_unit: str
 
+    def of_planes(self, coding: Coding) -> Coding:
+        """The coding that gives `values` the codes that `coding` gives the same in the sheet's unit."""
+        if isinstance(coding, LogCoding):
+            return LogCoding(coding.low - math.log10(self.factor), coding.step, coding.nothing)
+        return LinearCoding(coding.low / self.factor, coding.step / self.factor)
+
     def values(self, planes: NDArray[np.float32]) -> NDArray[np.float32]:
-        """Values in the sheet's unit, float32 (rows, columns), from planes (channels, rows, columns); NaN where a mean
-        has no weight."""
+        """What is coded, float32 (rows, columns), from planes (channels, rows, columns): the sheet's values over
+        `factor`, NaN where a mean has no weight."""
         if self.weight is None:
-            return planes[self.plane] * np.float32(self.factor)
+            return planes[self.plane]
         weight = planes[self.weight]
         values = np.full(weight.shape, np.nan, dtype=np.float32)
-        np.divide(planes[self.plane], weight, out=values, where=weight > 0)
-        return values if self.factor == 1.0 else values * np.float32(self.factor)
+        return np.divide(planes[self.plane], weight, out=values, where=weight > 0)
 
 
 @dataclass

@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tilemap.buildfile import BuildFile
-from tilemap.channels import Report, SpeciesPlan, describe_sheet
+from tilemap.channels import Report, SheetPlan, SpeciesPlan, describe_sheet
 from tilemap.errors import InputError
 from tilemap.project.camera import Camera
 from tilemap.project.scatter import Buckets, Plan
@@ -22,7 +22,7 @@ from tilemap.project.smoothing import neighbour_radii
 from tilemap.project.stamps import stamps_for
 from tilemap.project.vcycle import Cycle
 from tilemap.pyramid.grid import TILE
-from tilemap.pyramid.reduce import halve
+from tilemap.pyramid.reduce import halve, plane_sums
 from tilemap.pyramid.writer import WHOLE, SheetWriter
 from tilemap.runners.local import LocalRunner
 from tilemap.sources import Chunk, Source
@@ -110,7 +110,7 @@ class SpeciesDrawing:
         pixels = plan.rows * plan.columns
         codings = [self.planes.coding(sheet, sums[sheet.plane] / pixels) for sheet in sheets]
         writers = [
-            SheetWriter(folder / sheet.name, (plan.rows, plan.columns), plan.slabs, coding)
+            SheetWriter(folder / sheet.name, (plan.rows, plan.columns), plan.slabs, sheet.of_planes(coding))
             for sheet, coding in zip(sheets, codings, strict=True)
         ]
         bases = [self.cycle.base(self.buckets, slab, self.runner) for slab in range(plan.slabs)]
@@ -128,7 +128,7 @@ class SpeciesDrawing:
         entries = []
         for sheet, coding, writer in zip(sheets, codings, writers, strict=True):
             entry = describe_sheet(sheet, coding, [float(total) for total in totals[:, sheet.plane]])
-            entry |= self._summary(sheet.values, coarse[-1])
+            entry |= self._summary(sheet, coarse[-1])
             writer.close(entry)
             entries.append(entry)
         return entries
@@ -146,7 +146,7 @@ class SpeciesDrawing:
         for slab in range(plan.slabs):
             image, drawn = self.cycle.region(self.buckets, bases[slab], region, slab)
             if drawn:
-                sums = image.sum(axis=(1, 2), dtype=np.float64)
+                sums = plane_sums(image)
                 with self._lock:
                     totals[slab] += sums
                 if plan.slabs > 1:
@@ -192,10 +192,10 @@ class SpeciesDrawing:
             if level + 1 < plan.levels:
                 image = halve(image)
 
-    def _summary(self, values_of: Any, image: NDArray[np.float32]) -> dict[str, Any]:
+    def _summary(self, sheet: SheetPlan, image: NDArray[np.float32]) -> dict[str, Any]:
         while max(image.shape[1:]) > SUMMARY_PX:
             image = halve(image)
-        values = values_of(image)
+        values = sheet.values(image).astype(np.float64) * sheet.factor
         values = values[np.isfinite(values) & (values != 0)]
         if not len(values):
             return {"percentiles": {}, "range": None}

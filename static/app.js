@@ -200,7 +200,7 @@ export class Frame {
     const { w, h, dw, dh, ratio } = this.size;
     this.map.resize(dw, dh, ratio);
     this.markers.resize(dw, dh, ratio);
-    for (const canvas of [this.map.canvas, this.markers.canvas]) Object.assign(canvas.style, { width: `${w}px`, height: `${h}px` });
+    for (const sheet of [this.map.canvas, this.markers.canvas, this.hand]) Object.assign(sheet.style, { width: `${w}px`, height: `${h}px` });
     const { view } = this.motion;
     this.motion.view = this.motion.limits.clamp(view.resized(w, h));
     this.moved();

@@ -137,7 +137,7 @@ export class CensusEdge {
     const most = Math.max(...counts.whole, 1);
     // Counts are drawn by their square root: one heavy cluster is as easy to see as the thousandth dwarf.
     // The bars fill the height with what is in view; the outline keeps the shape of the whole.
-    const seenMost = Math.max(...counts.in_view, 1);
+    const seenMost = Math.max(...counts.in_view, 6);
     const y = (n, top_n) => base - (base - top) * Math.sqrt(n / top_n);
     const [lo, hi] = this.ends;
     const marks = [];

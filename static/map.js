@@ -21,6 +21,9 @@ const CRISP = 3;
 const PATIENCE = 450;
 const FADE = 180;
 
+/** @param {Tone} a @param {Tone} b */
+const same = (a, b) => a.lo === b.lo && a.hi === b.hi && a.curve === b.curve && a.ramp === b.ramp;
+
 export class MapSurface {
   /** @param {HTMLCanvasElement} canvas @param {import('./tiles.js').Tiles} tiles @param {() => void} wake asks for a frame */
   constructor(canvas, tiles, wake) {
@@ -53,9 +56,9 @@ export class MapSurface {
     const { front } = this;
     if (front?.layer.id === layer.id) {
       this.next = null;
-      if (front.tone !== tone) this.recolour(tone);
+      if (!same(front.tone, tone)) this.recolour(tone);
     } else if (this.next?.layer.id === layer.id) {
-      if (this.next.tone !== tone) Object.assign(this.next, { tone, painted: tone, lut: this.tiles.addLut(lut(tone, layer.coding)) });
+      if (!same(this.next.tone, tone)) Object.assign(this.next, { tone, painted: tone, lut: this.tiles.addLut(lut(tone, layer.coding)) });
     } else {
       const id = this.tiles.addLut(lut(tone, layer.coding));
       this.next = { layer, tone, painted: tone, lut: id, mosaic: new Mosaic(layer, this.tiles) };
@@ -75,7 +78,7 @@ export class MapSurface {
     if (this.recolouring) return;
     this.recolouring = true;
     let plate = this.front;
-    while (this.front && this.front.tone !== this.front.painted) {
+    while (this.front && !same(this.front.tone, this.front.painted)) {
       plate = this.front;
       plate.painted = plate.tone;
       const begin = performance.now();
@@ -89,6 +92,7 @@ export class MapSurface {
       await new Promise((done) => requestAnimationFrame(done));
     }
     this.recolouring = false;
+    this.wake();
     clearTimeout(this.rest);
     // The tiles that are out of sight follow when the hand rests.
     this.rest = window.setTimeout(() => this.tiles.repaint(plate.layer, plate.lut, null), 200);

@@ -25,6 +25,8 @@ from tilemap.demo.profiles import (
     hot_radius,
     virial_temperature,
 )
+from tilemap.project.smoothing import neighbour_radii
+from tilemap.runners.local import LocalRunner
 
 MEAN_DENSITY_TEMPERATURE = 1.2e4  # K, and the slope: Hui & Gnedin (1997, MNRAS 292, 27), long after reionisation
 SLOPE = 0.55
@@ -76,13 +78,13 @@ def look_around(drawn: Drawn, halos: Halos, box: float) -> Surroundings:
         halos.centre[heavy] % box, ENVELOPE * halos.radius[heavy], workers=-1, return_sorted=True
     )
     near = [outside[np.asarray(found, dtype=np.int64)] for found in hits]
-    # The same few hundred directions for all: a spiral of evenly spaced points on the sphere.
-    k = np.arange(300) + 0.5
+    # The same two hundred directions for all: a spiral of evenly spaced points on the sphere.
+    k = np.arange(200) + 0.5
     turn, z = np.pi * (1.0 + np.sqrt(5.0)) * k, 1.0 - 2.0 * k / len(k)
     compass = np.stack([np.cos(turn) * np.sqrt(1 - z**2), np.sin(turn) * np.sqrt(1 - z**2), z], axis=-1)
     inflow = np.zeros((len(heavy), 3, 3))
     for row, (halo, every) in enumerate(zip(heavy, near, strict=True)):
-        points = every[:: 1 + len(every) // 1500]  # more do not change the answer
+        points = every[:: 1 + len(every) // 600]  # more do not change the answer
         offset = wrap(drawn.position[points] - halos.centre[halo], box)
         direction = offset / np.maximum(np.linalg.norm(offset, axis=1), 1e-9)[:, None]
         gathered = np.exp(12.0 * (compass @ direction.T - 1.0)) @ drawn.mass[points]
@@ -232,18 +234,11 @@ def heat_envelopes(
         temperature[points] = np.maximum(temperature[points], heated)
 
 
-def smoothing_radius(position: Floats, box: float, neighbours: int = 16, wanted: int = 56) -> Floats:
+def smoothing_radius(position: Floats, box: float, neighbours: int = 15, wanted: int = 56) -> Floats:
     """Support radius (p,) of the gas, comoving Mpc, that holds about `wanted` neighbours in three dimensions.
 
-    From the distance to a nearer neighbour, scaled up: a third of the time at a tenth of the accuracy that shows.
+    From the distance to a nearer neighbour, scaled up: a third of the time, for a scatter of 8 per cent in the radius.
     """
-    wrapped = position % box % box
-    cells = (wrapped * (64 / box)).astype(np.int64)
-    sorting = np.argsort((cells[:, 0] * 64 + cells[:, 1]) * 64 + cells[:, 2], kind="stable")
-    tree = cKDTree(wrapped[sorting], boxsize=box, balanced_tree=False, compact_nodes=False)
-    # Stored in space order and asked in the tree's own, one answer's memory is still at hand for the next: it
-    # takes less than half the time.
-    distance = tree.query(tree.data[tree.indices], k=[neighbours], workers=-1)[0][:, 0]
-    radius = np.empty(len(position))
-    radius[sorting[tree.indices]] = distance
-    return radius * np.cbrt(wanted / neighbours)
+    with LocalRunner() as runner:
+        distance = neighbour_radii(position, neighbours, np.full(3, box), runner)
+    return distance * np.cbrt(wanted / (neighbours + 1))

@@ -98,7 +98,7 @@ def evolve(
     cosmos: Cosmos,
     a_end: float,
     a_start: float = 0.06,
-    steps: int = 10,
+    steps: int = 8,
     mesh_factor: int = 2,
     tell: Callable[[float], None] = lambda share: None,
 ) -> tuple[Field, Field]:

@@ -82,8 +82,9 @@ def build_atlas(
     if memory is not None:
         _check_memory(source, plan, species, byte_count(memory))
     with _scratch(target) as scratch, LocalRunner(workers) as runner:
-        create_group(scratch)
         facts = source.facts
+        inputs = runner.begin(lambda: _inputs(build, facts))
+        create_group(scratch)
         epoch = _epoch(facts, camera)
         create_group(scratch / epoch["name"])
         view = describe_view(build, camera)
@@ -102,7 +103,7 @@ def build_atlas(
         order = list(build.sheets)
         epoch["sheets"].sort(key=lambda sheet: order.index(sheet["name"]))
         progress("publishing", 0, 1)
-        description = _describe(build, camera, plan, view, epoch, facts)
+        description = _describe(build, camera, plan, view, epoch, inputs.result())
         (scratch / "atlas.json").write_text(json.dumps(description, indent=1, allow_nan=False), encoding="utf-8")
         published = publish(scratch, target)
         progress("publishing", 1, 1)
@@ -140,13 +141,17 @@ def _epoch(facts: Facts, camera: Camera) -> dict[str, Any]:
 
 
 def _describe(
-    build: BuildFile, camera: Camera, plan: Plan, view: dict[str, Any], epoch: dict[str, Any], facts: Facts
+    build: BuildFile,
+    camera: Camera,
+    plan: Plan,
+    view: dict[str, Any],
+    epoch: dict[str, Any],
+    inputs: list[dict[str, Any]],
 ) -> dict[str, Any]:
-    files = [*facts.files, *([build.folder / build.catalogue.file] if build.catalogue else [])]
     provenance = {
         "build_file": build.text,
         "versions": {"python": platform.python_version()} | {name: _version(name) for name in _REPORTED},
-        "inputs": [{"file": path.name, "bytes": path.stat().st_size, "sha256": file_sha256(path)} for path in files],
+        "inputs": inputs,
         "built": datetime.now(UTC).isoformat(timespec="microseconds"),
     }
     return {
@@ -163,6 +168,12 @@ def _describe(
         "epochs": [epoch],
         "provenance": provenance,
     }
+
+
+def _inputs(build: BuildFile, facts: Facts) -> list[dict[str, Any]]:
+    """Name, length and checksum of every file that goes in."""
+    files = [*facts.files, *([build.folder / build.catalogue.file] if build.catalogue else [])]
+    return [{"file": path.name, "bytes": path.stat().st_size, "sha256": file_sha256(path)} for path in files]
 
 
 def _version(name: str) -> str | None:

@@ -36,6 +36,10 @@ class LocalRunner:
     ) -> None:
         self._pool.shutdown(wait=True, cancel_futures=True)
 
+    def begin(self, work: Callable[[], Result]) -> Future[Result]:
+        """Start one piece of work beside everything else; its `result()` waits for it."""
+        return self._pool.submit(work)
+
     def map(self, work: Callable[[Piece], Result], pieces: Iterable[Piece]) -> Iterator[Result]:
         """`work` on every piece; results in order. At most one piece more than there are workers is in memory at once.
 

@@ -96,7 +96,7 @@ def _add(image, x, y, radius, values, table, points, weights):
 
 def points_for(radius_px: float) -> int:
     """Quadrature points along a pixel (along a quarter of the radius where that is less): enough for 1e-5."""
-    return 6 if radius_px < 12 else 3 if radius_px < 60 else 2 if radius_px < 240 else 1
+    return 5 if radius_px < 6 else 3 if radius_px < 24 else 2 if radius_px < 240 else 1
 
 
 def project(
@@ -121,7 +121,7 @@ def project(
     table = column(kernel)
     image = np.zeros((len(edges) - 1, values.shape[1], *size))
     axis_u, axis_v, axis_depth = AXES[along]
-    rules = {n: np.polynomial.legendre.leggauss(n + more_points) for n in (1, 2, 3, 6)}
+    rules = {n: np.polynomial.legendre.leggauss(n + more_points) for n in (1, 2, 3, 5)}
     steps = [0.0] * 3 if period is None else [float(period[axis]) for axis in (axis_u, axis_v, axis_depth)]
     for p, h, value in zip(position, radius, np.asarray(values, dtype=np.float64), strict=True):
         r = h / pixel

@@ -85,10 +85,10 @@ def test_the_narrowest_kernel_of_a_coarse_image_is_right_at_every_place_in_its_p
 
 @pytest.mark.parametrize("kernel", KERNELS)
 def test_the_plain_sum_does_not_change_with_finer_quadrature(kernel):
-    # What the engine is measured against is itself good to 1e-6 below 240 pixels.
-    for radius in (0.02, 0.7, 3.0, 11.9, 59.0, 130.0):
+    # What the engine is measured against is itself good to 1e-5, and much better where it is drawn finely.
+    for radius in (0.02, 0.7, 3.0, 5.9, 6.1, 11.9, 23.9, 24.1, 59.0, 130.0):
         given = {"u_low": 0.0, "v_high": 300.0, "pixel": 1.0, "size": (300, 300), "edges": np.array([0.0, 2.0])}
         particle = np.array([[150.3, 149.9, 1.0]]), np.array([radius]), np.ones((1, 1))
         coarse, fine = (project(*particle, **given, kernel=kernel, more_points=more) for more in (0, 4))
-        assert np.abs(coarse - fine).sum() < 1e-6
-        assert fine.sum() == pytest.approx(1, abs=1e-7)
+        assert np.abs(coarse - fine).sum() < 1e-5
+        assert fine.sum() == pytest.approx(1, abs=1e-6)

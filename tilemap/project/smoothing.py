@@ -43,7 +43,7 @@ def neighbour_radii(
     Raises
     ------
     InputError
-        Where there are not more than k particles.
+        Where there are not more than k particles, or every particle has k others at its own place.
     """
     if len(position) <= neighbours:
         raise InputError(
@@ -62,7 +62,10 @@ def neighbour_radii(
         radii[own] = distance
     smallest = radii[radii > 0].min(initial=np.inf)
     if not np.isfinite(smallest):
-        raise InputError(f"all {len(position)} particles lie at the same place: give smoothing.radius instead")
+        raise InputError(
+            f"smoothing.neighbours is {neighbours}, and each of the {len(position)} particles has as many at its very "
+            "place: ask for more, or give smoothing.radius"
+        )
     return np.maximum(radii, smallest)
 
 

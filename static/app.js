@@ -22,7 +22,7 @@ import { Tiles } from './tiles.js';
 import { ToneEdge } from './tone.js';
 import { fixed } from './units.js';
 import { Limits, View } from './view.js';
-import { say } from './words.js';
+import { LOCALE, say } from './words.js';
 
 /** @param {string} id */
 const at = (id) => /** @type {HTMLElement} */ (document.getElementById(id));
@@ -34,7 +34,7 @@ export class Frame {
     this.status = status;
     this.hand = at('hand');
     this.frameAsked = 0;
-    this.timers = { tiles: 0, counts: 0 };
+    this.timers = { tiles: 0, counts: 0, ahead: 0 };
     this.asked = { tiles: 0, counts: 0 };
     /** @type {Map<string, Layer>} */
     this.layers = new Map();
@@ -43,6 +43,7 @@ export class Frame {
       arrived: (tile) => this.tileArrived(tile),
       trouble: (kind) => status.say(say(`trouble_${kind}`), { kind: 'server', stay: kind === 'server' ? 0 : 8000 }),
       fine: () => status.kind === 'server' && status.say(say('trouble_back'), { kind: 'server', stay: 2500 }),
+      calm: () => status.clear('server'),
       gone: () => this.reopen(),
     });
     this.map = new MapSurface(/** @type {HTMLCanvasElement} */ (at('ground')), this.tiles, () => this.wake());
@@ -87,13 +88,22 @@ export class Frame {
   title() {
     const { atlas, state } = this;
     document.title = atlas.title || say('untitled');
+    document.documentElement.lang = LOCALE;
     const { redshift, age_gyr: age } = state.epoch;
     const facts = [];
     if (redshift !== null && redshift !== undefined && atlas.view.coordinates === 'comoving') facts.push(say('epoch', { z: fixed(redshift, 2) }));
     if (age) facts.push(say('age', { age: fixed(age, 1) }));
     at('title').replaceChildren(make('h1', { title: atlas.json.about ?? '' }, atlas.title || say('untitled')), make('div.dim', {}, facts.join(' · ')));
+    if (atlas.epochs.length > 1) at('title').append(this.epochs(atlas.epochs));
     const keys = make('button.word.act', { type: 'button', click: () => this.showKeys() }, say('keys'));
     at('links').replaceChildren(this.linking.word, keys);
+  }
+
+  /** A word for each epoch, to step through in place. @param {import('./atlas.js').Epoch[]} list */
+  epochs(list) {
+    const row = words(say('epochs'), (name) => this.state.set({ epoch: list.find((e) => e.name === name) }));
+    row.update(list.map(({ name }) => ({ value: name, text: name })), this.state.epoch.name);
+    return row.root;
   }
 
   // What is shown ------------------------------------------------------------------------------------------------
@@ -112,6 +122,7 @@ export class Frame {
     const { state } = this;
     this.map.show(this.layer, state.tone);
     this.sheets.update(state.epoch.sheets.map((s, i) => ({ value: s.name, text: s.title || s.name, title: say('sheet_key', { n: i + 1 }) })), state.sheet.name);
+    if (changed.has('epoch')) this.title();
     if (changed.has('object')) this.seekObject();
     this.tone.draw();
     this.depth.draw();
@@ -149,10 +160,16 @@ export class Frame {
     const more = this.map.render(view, now);
     this.markers.draw(view, (context) => this.grid.draw(context, view));
     if (this.drawnView !== view) this.scale.draw();
-    this.drawnView = view;
+    /** @type {View} */ this.drawnView = view;
     this.reading.update(view);
-    const busy = more || this.motion.moving || this.map.recolouring || this.tiles.pending > 0;
+    const busy = more || this.motion.moving || this.map.recolouring || this.linking.pending || this.tiles.pending > 0;
     this.hand.setAttribute('aria-busy', String(busy));
+    if (!busy && !this.timers.ahead && this.aheadFor !== view) {
+      this.aheadFor = view;
+      this.timers.ahead = window.setTimeout(() => this.map.ask(this.motion.view, true), 500);
+    }
+    // For whoever measures: when the first view was complete.
+    if (!busy && this.map.front && !performance.getEntriesByName('first-view').length) performance.mark('first-view');
     if (more || this.motion.moving) this.wake();
   }
 
@@ -162,6 +179,9 @@ export class Frame {
     clearTimeout(this.timers.tiles);
     const wait = Math.max(this.asked.tiles + every - performance.now(), 0);
     const ask = () => {
+      clearTimeout(this.timers.ahead);
+      this.timers.ahead = 0;
+      this.aheadFor = null;
       this.timers.tiles = 0;
       this.asked.tiles = performance.now();
       this.map.ask(this.motion.view);

@@ -10,6 +10,7 @@ import { dress, make } from './dom.js';
  * @property {(x: number, y: number) => void} drag to a place, CSS pixels in the track
  * @property {() => void} [begin] at the start of a drag
  * @property {() => void} [reset] on a double click
+ * @property {() => void} [type] on Enter, where a number can be typed
  */
 
 /**
@@ -46,6 +47,12 @@ export function handle(track, grip) {
   if (grip.reset) root.addEventListener('dblclick', grip.reset);
 
   root.addEventListener('keydown', (event) => {
+    if (event.key === 'Enter' && grip.type) {
+      grip.type();
+      event.preventDefault();
+      event.stopPropagation();
+      return;
+    }
     const steps = {
       ArrowUp: 1, ArrowRight: 1, ArrowDown: -1, ArrowLeft: -1,
       PageUp: 10, PageDown: -10, End: Infinity, Home: -Infinity,

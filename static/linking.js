@@ -17,19 +17,26 @@ export class Linking {
   /** The address follows when things have come to rest. */
   soon() {
     clearTimeout(this.timer);
-    this.timer = window.setTimeout(() => this.write(), 250);
+    this.timer = window.setTimeout(() => this.write(), 200);
+  }
+
+  /** Whether the address is still to follow. */
+  get pending() {
+    return this.timer !== 0;
   }
 
   write() {
     const { motion, hand, state } = this.frame;
+    clearTimeout(this.timer);
+    this.timer = 0;
     if (motion.moving || hand.classList.contains('moving')) return this.soon();
     const { view } = motion;
     const snapped = motion.limits.clamp(view.with(settled(view)));
     if (!snapped.equals(view)) {
       // The view becomes exactly what the link says; the difference is below a hundredth of a pixel.
       motion.view = snapped;
-      this.frame.wake();
     }
+    this.frame.wake();
     const link = write({ ...settled(snapped), ...state.toLink() });
     if (link !== location.hash) history.replaceState(history.state, '', link);
   }

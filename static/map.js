@@ -21,6 +21,22 @@ const CRISP = 3;
 const PATIENCE = 450;
 const FADE = 180;
 
+/**
+ * The tiles of a range, nearest to the middle of the view first.
+ * @param {Layer} layer @param {number} level @param {{c0: number, c1: number, r0: number, r1: number}} range @param {View} view
+ * @returns {Place[]}
+ */
+function places(layer, level, range, view) {
+  const side = layer.atlas.pixelAt(level) * SIDE;
+  const [u, v] = [(view.u - layer.atlas.view.u[0]) / side, (layer.atlas.view.v[1] - view.v) / side];
+  const list = [];
+  for (let row = range.r0; row < range.r1; row++) {
+    for (let column = range.c0; column < range.c1; column++) list.push({ layer, level, row, column });
+  }
+  const away = (/** @type {Place} */ { row, column }) => Math.hypot(column + 0.5 - u, row + 0.5 - v);
+  return list.sort((a, b) => away(a) - away(b));
+}
+
 /** @param {Tone} a @param {Tone} b */
 const same = (a, b) => a.lo === b.lo && a.hi === b.hi && a.curve === b.curve && a.ramp === b.ramp;
 
@@ -40,8 +56,6 @@ export class MapSurface {
     this.fadeFrom = 0;
     this.recolouring = false;
     this.rest = 0;
-    /** ms the last recolouring of the view took */
-    this.recolourMs = 0;
   }
 
   /** @param {number} w device pixels @param {number} h device pixels @param {number} ratio device pixels per CSS pixel */
@@ -86,8 +100,8 @@ export class MapSurface {
       const visible = new Set(plate.mosaic.cells.keys());
       this.tiles.repaint(plate.layer, plate.lut, visible);
       await Promise.race([this.coloured(visible, plate.lut), new Promise((done) => setTimeout(done, 1000))]);
-      this.recolourMs = performance.now() - begin;
       plate.mosaic.invalidate();
+      performance.measure('recolour', { start: begin });
       this.wake();
       await new Promise((done) => requestAnimationFrame(done));
     }
@@ -120,24 +134,26 @@ export class MapSurface {
     return { level, range: layer.atlas.range(level, view.bounds) };
   }
 
-  /** Tells the tile store what this view needs, nearest to the middle first. @param {View} view */
-  ask(view) {
+  /**
+   * Tells the tile store what this view needs, nearest to the middle first.
+   * @param {View} view @param {boolean} [ahead] also what a next step would need: the tiles around, and the next coarser ones
+   */
+  ask(view, ahead = false) {
     const plate = this.wanted;
     if (!plate) return;
     const { layer } = plate;
     const { level, range } = this.frameOf(view, layer);
-    const side = layer.atlas.pixelAt(level) * SIDE;
-    const [cu, cv] = [(view.u - layer.atlas.view.u[0]) / side, (layer.atlas.view.v[1] - view.v) / side];
-    /** @type {(Place & {away: number})[]} */
-    const places = [];
-    for (let row = range.r0; row < range.r1; row++) {
-      for (let column = range.c0; column < range.c1; column++) {
-        places.push({ layer, level, row, column, away: Math.hypot(column + 0.5 - cu, row + 0.5 - cv) });
-      }
-    }
-    places.sort((a, b) => a.away - b.away);
     const base = { layer, level: layer.atlas.levels - 1, row: 0, column: 0 };
-    this.tiles.wish([base, ...places], () => plate.lut);
+    const needed = [base, ...places(layer, level, range, view)];
+    const more = [];
+    if (ahead && layer.names.length === 1) {
+      const [across, down] = layer.atlas.grid(level);
+      const { c0, c1, r0, r1 } = range;
+      const around = { c0: Math.max(c0 - 1, 0), c1: Math.min(c1 + 1, across), r0: Math.max(r0 - 1, 0), r1: Math.min(r1 + 1, down) };
+      more.push(...places(layer, level, around, view));
+      if (level + 1 < layer.atlas.levels) more.unshift(...places(layer, level + 1, layer.atlas.range(level + 1, view.bounds), view));
+    }
+    this.tiles.wish(needed, more, () => plate.lut);
   }
 
   /** Whether all tiles of the view are there. @param {Plate} plate @param {View} view */
@@ -168,7 +184,7 @@ export class MapSurface {
     if (this.front) this.drawPlate(this.front, view, faded);
     if (faded === 1) this.old = null;
     this.edge(view);
-    return Boolean(this.old) || Boolean(this.next);
+    return Boolean(this.old || this.next || this.front?.mosaic.fresh.size);
   }
 
   /** @param {View} view @param {number} now */

@@ -7,6 +7,8 @@ import { GROUND } from './ramps.js';
 /** @typedef {import('./tiles.js').Tile} Tile */
 
 const SIDE = 512;
+/** How strongly a tile that has come is laid over what stood in for it, frame by frame. */
+const FADE = [0.3, 0.4, 0.5, 1];
 
 export class Mosaic {
   /** @param {Layer} layer @param {import('./tiles.js').Tiles} tiles */
@@ -21,6 +23,9 @@ export class Mosaic {
     this.cells = new Map();
     /** @type {Set<string>} */
     this.stale = new Set();
+    /** @type {Map<string, {row: number, column: number, frame: number}>} tiles that are just coming into sight */
+    this.fresh = new Map();
+    this.calm = matchMedia('(prefers-reduced-motion: reduce)');
   }
 
   /** Part of the canvas in use, pixels of the level; it stops at the edge of the volume. */
@@ -66,14 +71,32 @@ export class Mosaic {
       }
       this.cells.clear();
       this.stale.clear();
+      this.fresh.clear();
     }
     for (let row = r0; row < r1; row++) {
       for (let column = c0; column < c1; column++) {
         const key = this.key(row, column);
-        if (!same || this.stale.has(key)) this.cells.set(key, this.draw(key, row, column));
+        if (!same) this.cells.set(key, this.draw(key, row, column));
+        else if (this.stale.has(key)) this.renew(key, row, column);
       }
     }
     this.stale.clear();
+    for (const [key, { row, column, frame }] of this.fresh) {
+      this.context.globalAlpha = FADE[frame];
+      this.draw(key, row, column);
+      this.context.globalAlpha = 1;
+      if (frame + 1 < FADE.length) this.fresh.set(key, { row, column, frame: frame + 1 });
+      else this.fresh.delete(key);
+    }
+  }
+
+  /** A cell whose tile has come, or whose stand-in can be bettered. @param {string} key @param {number} row @param {number} column */
+  renew(key, row, column) {
+    const stoodIn = this.cells.get(key) === false;
+    const there = Boolean(this.tiles.get(key));
+    this.cells.set(key, there);
+    if (there && stoodIn && !this.calm.matches) this.fresh.set(key, { row, column, frame: 0 });
+    else this.draw(key, row, column);
   }
 
   /** @param {string} key @param {number} row @param {number} column @returns {boolean} whether the tile itself was there */

@@ -4,7 +4,7 @@
 /** @typedef {{row: number, u: number, v: number, depth: number, size: number|null, rank: number|null, id?: string|number, columns: Record<string, any>}} Found */
 /** @typedef {{in_view: number, objects: Found[]}} Answer */
 
-const LIMIT = 600;
+const LIMIT = 250;
 const BINS = 48;
 
 export class Catalogue {

@@ -11,7 +11,7 @@
  * @property {number} bytes @property {number} used @property {number} tries @property {number} retry time in ms
  * @property {Worker} worker
  */
-/** @typedef {{arrived(tile: Tile): void, trouble(kind: string): void, fine(): void, gone(): void}} Listener */
+/** @typedef {{arrived(tile: Tile): void, trouble(kind: string): void, fine(): void, calm(): void, gone(): void}} Listener */
 /** @typedef {{layer: Layer, level: number, row: number, column: number}} Place */
 
 const AT_ONCE = 8;
@@ -21,13 +21,15 @@ const LONGEST_DELAY = 15000;
 
 export class Tiles {
   /** @param {Listener} listener @param {{workers?: number, budget?: number}} [settings] budget in bytes */
-  constructor(listener, { workers = poolSize(), budget = 320e6 } = {}) {
+  constructor(listener, { workers = poolSize(), budget = 256e6 } = {}) {
     this.listener = listener;
     this.budget = budget;
     /** @type {Map<string, Tile>} */
     this.all = new Map();
     /** @type {Set<string>} */
     this.wished = new Set();
+    /** @type {Set<string>} */
+    this.needed = new Set();
     /** @type {Tile[]} */
     this.queue = [];
     this.loading = 0;
@@ -62,12 +64,13 @@ export class Tiles {
 
   /**
    * Says what is wanted, most wanted first; everything else in flight is called off.
-   * @param {Place[]} places @param {(layer: Layer) => number} lutOf
+   * @param {Place[]} needed for the view @param {Place[]} more that may be needed next @param {(layer: Layer) => number} lutOf
    */
-  wish(places, lutOf) {
+  wish(needed, more, lutOf) {
     this.wished = new Set();
+    this.needed = new Set(needed.map(({ layer, level, row, column }) => layer.key(level, row, column)));
     this.queue = [];
-    for (const { layer, level, row, column } of places) {
+    for (const { layer, level, row, column } of [...needed, ...more]) {
       const key = layer.key(level, row, column);
       if (this.wished.has(key)) continue;
       this.wished.add(key);
@@ -98,10 +101,10 @@ export class Tiles {
     this.pump();
   }
 
-  /** How many wished tiles are still to come. */
+  /** How many of the tiles needed for the view are still to come. */
   get pending() {
     let n = 0;
-    for (const key of this.wished) {
+    for (const key of this.needed) {
       const tile = this.all.get(key);
       if (tile && (tile.state === 'waiting' || tile.state === 'loading' || tile.lut !== tile.asked) && tile.state !== 'failed') n++;
     }
@@ -164,13 +167,14 @@ export class Tiles {
     this.loading--;
     tile.state = 'waiting';
     if (reason === 'gone') return this.listener.gone();
+    if (!this.wished.has(tile.key)) return this.pump();
     if (reason === 'server') {
       const delay = Math.min(this.pause.delay * 2 || FIRST_DELAY, LONGEST_DELAY);
       if (performance.now() >= this.pause.until) {
         this.pause = { until: performance.now() + delay, delay };
         setTimeout(() => this.resume(), delay + 10);
       }
-      if (this.wished.has(tile.key)) this.queue.unshift(tile);
+      this.queue.unshift(tile);
       return this.listener.trouble('server');
     }
     if (++tile.tries < 3) this.queue.push(tile);
@@ -186,6 +190,11 @@ export class Tiles {
   resume() {
     this.pause.until = 0;
     this.pump();
+    if (this.pause.delay && !this.loading) {
+      // What could not be had is no longer wanted.
+      this.pause.delay = 0;
+      this.listener.calm();
+    }
   }
 
   /** @param {Tile} tile @param {number} lut */
@@ -222,7 +231,7 @@ export class Tiles {
 
   /** Forgets everything, as when the atlas was rebuilt. */
   clear() {
-    this.wish([], () => 0);
+    this.wish([], [], () => 0);
     for (const tile of [...this.all.values()]) this.drop(tile);
   }
 

@@ -7,6 +7,7 @@ import { handle } from './handle.js';
 import { rounded } from './link.js';
 import { curves, shade, step } from './lut.js';
 import { gradient, ramp, RAMPS } from './ramps.js';
+import { typed } from './typed.js';
 import { decade, number, quantity, unit } from './units.js';
 import { say } from './words.js';
 
@@ -48,13 +49,23 @@ export class ToneEdge {
       along: 'vertical',
       nudge: (steps) => this.move(which, Number.isFinite(steps) ? this.x(this.state.tone[which]) + (steps * this.span) / 100 : steps > 0 ? this.top : this.bottom),
       drag: (_, y) => this.move(which, this.at(y)),
-      reset: () => this.reset(),
+      reset: () => this.type(which, say(word)),
+      type: () => this.type(which, say(word)),
     });
     grip.root.classList.add(which);
     const label = make('span.number');
     grip.root.append(label);
     this.field.append(grip.root);
     return { ...grip, label };
+  }
+
+  /** A number typed for one end. @param {'lo'|'hi'} which @param {string} name */
+  type(which, name) {
+    const { root } = which === 'hi' ? this.bright : this.dark;
+    typed(root, name, this.state.tone[which], (value) => {
+      if (value !== null && (value > 0 || !this.log)) this.state.setTone({ [which]: value });
+      root.focus();
+    });
   }
 
   get log() {
@@ -216,8 +227,9 @@ export class ToneEdge {
   drawTicks() {
     const marks = [];
     const { tone } = this.state;
-    const [hi, lo] = [this.y(tone.hi) - 7, this.y(tone.lo) + 9];
-    const room = this.unit.offsetHeight * 0.62;
+    const tall = this.bright.label.offsetHeight;
+    const [hi, lo] = [this.y(tone.hi) - 2 - tall / 2, this.y(tone.lo) + 2 + tall / 2];
+    const room = 0.8 * tall + 2;
     const add = (x, text) => {
       const y = ((this.top - x) / this.span) * this.height;
       if (Math.min(Math.abs(y - hi), Math.abs(y - lo)) < room) return;

@@ -5,6 +5,7 @@ const TABLES = {
   en: {
     untitled: 'Atlas',
     map: 'Map. Arrow keys travel, plus and minus zoom, 0 shows the whole volume, question mark lists all keys.',
+    epochs: 'Epochs',
     epoch: 'z = {z}',
     age: '{age} Gyr',
 

@@ -79,11 +79,27 @@ def live(folder, even_folder):
     server.stop()
 
 
+@pytest.fixture(scope="session")
+def contexts(browser):
+    """Browser contexts by their settings: pages of one share its cache."""
+    made = {}
+
+    def context(**settings):
+        key = repr(sorted(settings.items()))
+        if key not in made:
+            made[key] = browser.new_context(permissions=["clipboard-read", "clipboard-write"], **settings)
+        return made[key]
+
+    return context
+
+
 @pytest.fixture
-def open_screen(browser, live):
-    """Opens a new page: ``open_screen(fragment, width=..., height=..., ratio=..., touch=..., atlas=..., address=..., motion=...)``."""
+def open_screen(contexts, browser, live):
+    """Opens a page: ``open_screen(fragment, width=..., height=..., ratio=..., touch=..., motion=..., atlas=..., address=...,
+    fresh=..., settle=...)``; `fresh` is a browser that has seen nothing yet.
+    """
     live.calm()
-    contexts = []
+    closing = []
 
     def new(
         fragment="",
@@ -91,23 +107,24 @@ def open_screen(browser, live):
         height=760,
         ratio=1,
         touch=False,
+        motion=False,
         atlas="field",
         address=None,
+        fresh=False,
         settle=True,
-        motion=False,
     ):
-        context = browser.new_context(
-            viewport={"width": width, "height": height},
-            device_scale_factor=ratio,
-            has_touch=touch,
-            reduced_motion="no-preference" if motion else "reduce",
-            is_mobile=touch,
-            permissions=["clipboard-read", "clipboard-write"],
-        )
-        contexts.append(context)
-        screen = Screen(context.new_page(), address or f"{live.address}/{atlas}/")
-        return screen.open(fragment, settle)
+        settings = {
+            "viewport": {"width": width, "height": height},
+            "device_scale_factor": ratio,
+            "has_touch": touch,
+            "is_mobile": touch,
+            "reduced_motion": "no-preference" if motion else "reduce",
+        }
+        context = browser.new_context(**settings) if fresh else contexts(**settings)
+        page = context.new_page()
+        closing.append(context if fresh else page)
+        return Screen(page, address or f"{live.address}/{atlas}/").open(fragment, settle)
 
     yield new
-    for context in contexts:
-        context.close()
+    for each in closing:
+        each.close()

@@ -49,8 +49,10 @@ class Live:
         self.port = self._server.port
         self._thread = threading.Thread(target=self._server.serve_forever, kwargs={"poll_interval": 0.02}, daemon=True)
         self._thread.start()
+        self.here = True
 
     def stop(self) -> None:
+        self.here = False
         self._server.shutdown()
         self._server.server_close()
         self._thread.join()
@@ -65,6 +67,8 @@ class Live:
 
     def _answer(self, environ: dict[str, Any], start: Callable[..., Any]) -> Iterable[bytes]:
         path = environ.get("SCRIPT_NAME", "") + environ["PATH_INFO"]
+        if not self.here:
+            raise ConnectionError("gone")  # a connection that the browser had opened beforehand
         self.asked.append(path)
         time.sleep(self.delay(path))
         if self.refuse(path):

@@ -32,13 +32,14 @@ class Screen:
         return self
 
     def settle(self, timeout: float = 10.0) -> None:
-        """Wait until nothing moves and nothing is awaited, and the link has followed (a quarter of a second later at most)."""
+        """Wait until nothing moves and nothing is awaited, and the link has followed."""
         end = time.monotonic() + timeout
         still = 0
-        while still < 3:
+        self.page.wait_for_timeout(50)
+        while still < 2:
             assert time.monotonic() < end, f"the map does not come to rest; {self.errors or self.status()}"
             still = still + 1 if self.page.get_attribute("#hand", "aria-busy") == "false" else 0
-            self.page.wait_for_timeout(90)
+            self.page.wait_for_timeout(30)
 
     def map_box(self) -> dict[str, float]:
         box = self.page.locator("#hand").bounding_box()

@@ -94,7 +94,7 @@ def test_values_are_written_on_wide_pixels(open_screen):
 
 
 def test_coarse_tiles_stand_in_while_fine_ones_are_awaited(open_screen, live):
-    screen = open_screen("#u=50&v=37&width=90&tone=3e3:3e6&markers=off")
+    screen = open_screen("#u=50&v=37&width=90&tone=3e3:3e6&markers=off", fresh=True)
     live.delay = lambda path: 1.5 if "/gas/0/" in path else 0.0
     screen.page.evaluate("location.hash = '#u=50&v=37&width=12&tone=3e3:3e6&markers=off'")
     screen.page.wait_for_timeout(500)
@@ -106,8 +106,9 @@ def test_coarse_tiles_stand_in_while_fine_ones_are_awaited(open_screen, live):
 
 
 def test_a_change_of_tone_asks_for_no_tile_and_recolours_all_of_the_map(open_screen, live):
-    screen = open_screen("#u=50&v=37&width=60&tone=3e3:3e6")
+    screen = open_screen("#u=50&v=37&width=60&tone=3e3:3e6", fresh=True)
     before = screen.pixels()
+    screen.page.wait_for_timeout(900)  # at rest, the tiles around are fetched ahead
     asked = len(live.tiles())
     screen.page.locator(".tone .hi").focus()
     screen.press("ArrowDown", 8)
@@ -119,14 +120,14 @@ def test_a_change_of_tone_asks_for_no_tile_and_recolours_all_of_the_map(open_scr
 
 
 def test_the_tiles_nearest_to_the_middle_are_asked_for_first(open_screen, live):
-    open_screen("#u=30&v=50&width=25")
+    open_screen("#u=30&v=50&width=25", fresh=True)
     fine = [(int(row), int(column)) for _, _, level, _, row, column in live.tiles() if level == "0"]
     away = [np.hypot(column + 0.5 - 30 / 25, row + 0.5 - 25 / 25) for row, column in fine]
     assert away[0] == min(away) and away[-1] > np.median(away)
 
 
 def test_tiles_that_left_the_view_are_not_waited_for(open_screen, live):
-    screen = open_screen("#u=80&v=20&width=90")
+    screen = open_screen("#u=80&v=20&width=90", fresh=True)
     live.delay = lambda path: 4.0 if "/gas/0/" in path else 0.0
     screen.page.evaluate("location.hash = '#u=20&v=60&width=12'")
     screen.page.wait_for_timeout(500)

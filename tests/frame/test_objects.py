@@ -50,7 +50,7 @@ def test_a_thin_line_ties_the_object_to_its_note(near):
     near.settle()
     marks, box = near.pixels("#marks")[:, :, 3], near.map_box()
     note = near.page.locator("#note").bounding_box()
-    x, y = near.at(50, 68)
+    x, _ = near.at(50, 68)
     scale = box["width"] / 20
     for part in (0.2, 0.5, 0.8):
         at = x + 2 * scale + part * (note["x"] - x - 2 * scale) - box["x"]

@@ -3,7 +3,6 @@
 import numpy as np
 import pytest
 
-
 PIXEL = 100 / 2048
 SPOTS = [(31.204, 40.007), (77.7, 12.34), (3.21, 70.5)]
 
@@ -66,7 +65,7 @@ def test_outside_the_volume_the_reading_says_so(open_screen):
 def test_one_key_copies_the_reading_with_unit_and_place(open_screen, atlas):
     screen = open_screen()
     screen.wanted = "sheet=gas"
-    u, v = point(screen, 31.204, 40.007)
+    u, _ = point(screen, 31.204, 40.007)
     value = screen.value()
     screen.page.keyboard.press("c")
     screen.page.wait_for_timeout(100)

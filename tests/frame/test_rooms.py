@@ -78,6 +78,11 @@ def test_on_a_phone_a_tap_reads_the_value_there(open_screen, atlas):
     assert screen.value() == pytest.approx(float(value), rel=1e-5)
 
 
+def test_every_module_is_fetched_at_once():
+    named = set(re.findall(r'modulepreload" href="frame/(.*?)"', (STATIC / "index.html").read_text()))
+    assert named == {file.name for file in STATIC.glob("*.js")} - {"app.js", "tile-worker.js"}
+
+
 def test_the_frame_needs_no_script_but_its_own():
     page = (STATIC / "index.html").read_text()
     assert not re.search(r"<script(?![^>]*src=)|\son\w+=|style=|https?://", page)

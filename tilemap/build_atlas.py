@@ -73,6 +73,8 @@ def build_atlas(
     """
     build = buildfile.load(Path(build_file))
     target = Path(out)
+    if not target.name:
+        raise InputError(f"{target} is no name for an atlas: give the folder to make, such as {build.path.stem}.atlas")
     check_target(target)
     source = open_source(build)
     camera = make_camera(build, source.facts)

@@ -24,6 +24,9 @@ LOG_ROOM_DEX = 40.0
 """How far below the mean of a log sheet its lowest code lies; at step 0.002 there are 91 dex above. Nothing that a
 single-precision image holds of a particle's kernel is cut off, and nothing is clipped."""
 LINEAR_STEPS = 65000
+LARGEST_BITS = 30
+"""The largest of the first particles adds about 2^30 to a plane: single precision then holds 10^29 times as much, and
+10^-47 of it. A luminosity in erg/s as it is would be past its end."""
 
 
 @dataclass(frozen=True)
@@ -51,15 +54,16 @@ class SheetPlan:
     factor: float
     total_unit: str
 
-    def of_planes(self, coding: Coding) -> Coding:
+    def of_planes(self, coding: Coding, scale: float) -> Coding:
         """The coding that gives `values` the codes that `coding` gives the same in the sheet's unit."""
+        factor = self.factor * scale
         if isinstance(coding, LogCoding):
-            return LogCoding(coding.low - math.log10(self.factor), coding.step, coding.nothing)
-        return LinearCoding(coding.low / self.factor, coding.step / self.factor)
+            return LogCoding(coding.low - math.log10(factor), coding.step, coding.nothing)
+        return LinearCoding(coding.low / factor, coding.step / factor)
 
     def values(self, planes: NDArray[np.float32]) -> NDArray[np.float32]:
         """What is coded, float32 (rows, columns), from planes (channels, rows, columns): the sheet's values over
-        `factor`, NaN where a mean has no weight."""
+        `factor` and scale, NaN where a mean has no weight."""
         if self.weight is None:
             return planes[self.plane]
         weight = planes[self.weight]
@@ -78,16 +82,22 @@ class SpeciesPlan:
         For each plane what is summed: (extensive field, None), or (weight field, averaged field).
     sheets : list of SheetPlan
     ranges : float64 (planes, 2)
-        Smallest and largest value of the averaged field, over particles of positive weight; filled while reading.
+        Smallest and largest value of the averaged field, over particles of positive weight, or of the summed one;
+        filled while reading. Masses and counts, which are not negative, are left out.
+    scales : float64 (planes,)
+        Powers of two that planes are divided by, so that single precision holds what is in them; see `settle`.
     """
 
     species: str
     quantities: list[tuple[str, str | None]]
     sheets: list[SheetPlan]
     ranges: NDArray[np.float64] = field(default_factory=lambda: np.empty((0, 2)))
+    scales: NDArray[np.float64] = field(default_factory=lambda: np.empty(0))
 
     def __post_init__(self) -> None:
         self.ranges = np.tile([np.inf, -np.inf], (len(self.quantities), 1))
+        self.scales = np.ones(len(self.quantities))
+        self._settled = np.zeros(len(self.quantities), dtype=bool)
 
     @property
     def fields(self) -> list[str]:
@@ -95,19 +105,40 @@ class SpeciesPlan:
         names = {name for pair in self.quantities for name in pair if name not in (None, "mass", "count")}
         return sorted(str(name) for name in names)
 
+    def settle(self, chunk: Chunk) -> None:
+        """Settle the scales by the first chunk that is not zero; call before `planes`, from one thread.
+
+        Powers of two change no bit of what is drawn, so the chunk does not matter.
+        """
+        for plane in map(int, np.flatnonzero(~self._settled)):
+            largest = np.abs(self._amount(chunk, plane)[0]).max(initial=0.0)
+            if 0 < largest < np.inf:
+                self.scales[plane] = 2.0 ** (math.frexp(largest)[1] - LARGEST_BITS)
+                self._settled[plane] = True
+
+    def scale(self, sheet: SheetPlan) -> float:
+        """What the sheet's `values` have to be multiplied by, besides its factor."""
+        below = 1.0 if sheet.weight is None else self.scales[sheet.weight]
+        return float(self.scales[sheet.plane] / below)
+
+    def _amount(self, chunk: Chunk, plane: int) -> tuple[NDArray[np.float64], NDArray[np.float64] | None]:
+        """What each particle adds to a plane, unscaled; and the values whose range matters."""
+        extensive, averaged = self.quantities[plane]
+        amount = _field(chunk, extensive)
+        if averaged is None:
+            return amount, None if extensive in ("mass", "count") else amount
+        value = _field(chunk, averaged)
+        return amount * value, value[amount > 0]
+
     def planes(self, chunk: Chunk) -> tuple[NDArray[np.float32], NDArray[np.float64]]:
         """What each particle adds to each plane, float32 (n, planes); and the ranges met, float64 (planes, 2)."""
         out = np.empty((len(chunk), len(self.quantities)), dtype=np.float32)
         ranges = np.tile([np.inf, -np.inf], (len(self.quantities), 1))
-        for plane, (extensive, averaged) in enumerate(self.quantities):
-            amount = _field(chunk, extensive)
-            if averaged is not None:
-                value = _field(chunk, averaged)
-                counted = value[amount > 0]
-                if len(counted):
-                    ranges[plane] = counted.min(), counted.max()
-                amount = amount * value
-            out[:, plane] = amount
+        for plane in range(len(self.quantities)):
+            amount, ranged = self._amount(chunk, plane)
+            if ranged is not None and len(ranged):
+                ranges[plane] = ranged.min(), ranged.max()
+            np.multiply(amount, 1.0 / self.scales[plane], out=out[:, plane], casting="same_kind")
         return out, ranges
 
     def widen(self, ranges: NDArray[np.float64]) -> None:
@@ -132,14 +163,15 @@ class SpeciesPlan:
         sheet, low_high = plan.sheet, self.ranges[plan.plane] * plan.factor
         if sheet.coding == "log":
             step = sheet.step or 0.002
+            if self.ranges[plan.plane, 0] < 0:
+                more = "" if plan.weight is not None else f", and a step in {sheet.unit}"
+                raise InputError(
+                    f"sheet {plan.name}: {sheet.sum or sheet.mean} goes down to {self.ranges[plan.plane, 0]:.6g} "
+                    f"{plan.total_unit}, and log coding holds positive values only: write coding: linear{more}"
+                )
             if plan.weight is None:
                 centre = mean_per_pixel * plan.factor
                 return LogCoding(_floor_log(centre) - min(LOG_ROOM_DEX, 30000 * step), step)
-            if low_high[0] < 0:
-                raise InputError(
-                    f"sheet {plan.name}: {sheet.mean} goes down to {low_high[0]:.6g} {sheet.unit}, and log coding holds "
-                    "positive values only: write coding: linear"
-                )
             lowest = low_high[0] if 0 < low_high[0] < np.inf else max(low_high[1], 1e-30) * 1e-12
             return LogCoding(_floor_log(lowest), step, nothing=math.nan)
         if plan.weight is None:

@@ -76,14 +76,19 @@ class SpeciesDrawing:
             assert chunk.radius is not None
             return len(chunk), *self.buckets.route(chunk.position, chunk.radius, values), ranges
 
-        for length, starts, placed, ranges in self.runner.map(route, self._chunks()):
+        for length, starts, placed, ranges in self.runner.map(route, self._settled_chunks()):
             self.buckets.add(starts, placed)
             self.planes.widen(ranges)
             sums += placed[:, 3:].sum(axis=0, dtype=np.float64)
             records += len(placed)
             done += length
             self.report(phase, done, count)
-        return records, sums
+        return records, sums * self.planes.scales
+
+    def _settled_chunks(self) -> Iterator[Chunk]:
+        for chunk in self._chunks():
+            self.planes.settle(chunk)
+            yield chunk
 
     def _chunks(self) -> Iterator[Chunk]:
         species, fields = self.planes.species, self.planes.fields
@@ -110,7 +115,12 @@ class SpeciesDrawing:
         pixels = plan.rows * plan.columns
         codings = [self.planes.coding(sheet, sums[sheet.plane] / pixels) for sheet in sheets]
         writers = [
-            SheetWriter(folder / sheet.name, (plan.rows, plan.columns), plan.slabs, sheet.of_planes(coding))
+            SheetWriter(
+                folder / sheet.name,
+                (plan.rows, plan.columns),
+                plan.slabs,
+                sheet.of_planes(coding, self.planes.scale(sheet)),
+            )
             for sheet, coding in zip(sheets, codings, strict=True)
         ]
         bases = [self.cycle.base(self.buckets, slab, self.runner) for slab in range(plan.slabs)]
@@ -127,7 +137,8 @@ class SpeciesDrawing:
         list(self.runner.map(lambda stack: self._coarser(stack, coarse[stack], writers), range(stacks)))
         entries = []
         for sheet, coding, writer in zip(sheets, codings, writers, strict=True):
-            entry = describe_sheet(sheet, coding, [float(total) for total in totals[:, sheet.plane]])
+            plane_totals = totals[:, sheet.plane] * self.planes.scales[sheet.plane]
+            entry = describe_sheet(sheet, coding, [float(total) for total in plane_totals])
             entry |= self._summary(sheet, coarse[-1])
             writer.close(entry)
             entries.append(entry)
@@ -195,7 +206,7 @@ class SpeciesDrawing:
     def _summary(self, sheet: SheetPlan, image: NDArray[np.float32]) -> dict[str, Any]:
         while max(image.shape[1:]) > SUMMARY_PX:
             image = halve(image)
-        values = sheet.values(image).astype(np.float64) * sheet.factor
+        values = sheet.values(image).astype(np.float64) * (sheet.factor * self.planes.scale(sheet))
         values = values[np.isfinite(values) & (values != 0)]
         if not len(values):
             return {"percentiles": {}, "range": None}

@@ -17,7 +17,7 @@ export class Linking {
   /** The address follows when things have come to rest. */
   soon() {
     clearTimeout(this.timer);
-    this.timer = window.setTimeout(() => this.write(), 200);
+    this.timer = window.setTimeout(() => this.write(), 150);
   }
 
   /** Whether the address is still to follow. */
@@ -47,8 +47,8 @@ export class Linking {
     const { view: link, bad } = read(location.hash);
     const trouble = state.fromLink(link);
     if (bad.length) trouble.push(['trouble_link', { part: bad[0] }]);
-    const said = link.u !== undefined || link.v !== undefined || link.width !== undefined;
-    const goal = said ? motion.view.with(link) : motion.limits.filled(motion.view);
+    // A link means the same wherever one was before: what it leaves out comes from the first view.
+    const goal = motion.limits.filled(motion.view).with(link);
     if (fly) motion.fly(goal);
     else motion.jump(goal);
     for (const [key, fill] of trouble) status.say(say(key, fill), { stay: 9000 });

@@ -5,6 +5,8 @@ import { decode, encode, valueTable } from './coding.js';
 
 const SIDE = 512;
 const PIXELS = SIDE * SIDE;
+/** A server that has not answered by then is taken for gone, ms. */
+const PATIENCE = 30000;
 
 /** @typedef {import('./atlas.js').Recipe} Recipe */
 /**
@@ -39,6 +41,11 @@ const answers = {
   async load({ key, recipe, lut, fresh }) {
     const control = new AbortController();
     running.set(key, control);
+    let late = false;
+    const timer = setTimeout(() => {
+      late = true;
+      control.abort();
+    }, PATIENCE);
     try {
       const tile = await make(recipe, control.signal, fresh);
       if (control.signal.aborted) return;
@@ -47,8 +54,9 @@ const answers = {
       await paint(key, tile, lut, bytes);
     } catch (error) {
       const reason = error instanceof Trouble ? error.reason : 'server';
-      if (!control.signal.aborted) postMessage({ type: 'failed', key, reason });
+      if (late || !control.signal.aborted) postMessage({ type: 'failed', key, reason });
     } finally {
+      clearTimeout(timer);
       if (running.get(key) === control) running.delete(key);
     }
   },

@@ -93,6 +93,32 @@ def contexts(browser):
     return context
 
 
+def how(width=1100, height=760, ratio=1, touch=False, motion=False):
+    return {
+        "viewport": {"width": width, "height": height},
+        "device_scale_factor": ratio,
+        "has_touch": touch,
+        "is_mobile": touch,
+        "reduced_motion": "no-preference" if motion else "reduce",
+    }
+
+
+@pytest.fixture(scope="session")
+def standing(contexts, live):
+    screen = Screen(contexts(**how()).new_page(), f"{live.address}/field/")
+    return screen.open()
+
+
+@pytest.fixture
+def screen(standing, live):
+    """A page that stays open from test to test, for those that begin by following a link."""
+    live.calm()
+    standing.page.mouse.move(2, 2)
+    standing.page.keyboard.press("Escape")
+    standing.page.evaluate("document.activeElement.blur()")
+    return standing
+
+
 @pytest.fixture
 def open_screen(contexts, browser, live):
     """Opens a page: ``open_screen(fragment, width=..., height=..., ratio=..., touch=..., motion=..., atlas=..., address=...,
@@ -113,13 +139,7 @@ def open_screen(contexts, browser, live):
         fresh=False,
         settle=True,
     ):
-        settings = {
-            "viewport": {"width": width, "height": height},
-            "device_scale_factor": ratio,
-            "has_touch": touch,
-            "is_mobile": touch,
-            "reduced_motion": "no-preference" if motion else "reduce",
-        }
+        settings = how(width, height, ratio, touch, motion)
         context = browser.new_context(**settings) if fresh else contexts(**settings)
         page = context.new_page()
         closing.append(context if fresh else page)

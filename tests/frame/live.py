@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import contextlib
+import socket
 import threading
 import time
 from collections.abc import Callable, Iterable
@@ -46,16 +48,26 @@ class Live:
     def start(self) -> None:
         self._server = make_server("127.0.0.1", self.port, self._answer, threaded=True, request_handler=Quiet)
         self._server.daemon_threads = True
+        self._sockets: list[socket.socket] = []
+        accept = self._server.get_request
+
+        def get_request() -> tuple[socket.socket, Any]:
+            connection, peer = accept()
+            self._sockets.append(connection)
+            return connection, peer
+
+        self._server.get_request = get_request  # type: ignore[method-assign]
         self.port = self._server.port
         self._thread = threading.Thread(target=self._server.serve_forever, kwargs={"poll_interval": 0.02}, daemon=True)
         self._thread.start()
-        self.here = True
 
     def stop(self) -> None:
-        self.here = False
         self._server.shutdown()
         self._server.server_close()
         self._thread.join()
+        for connection in self._sockets:  # also those that the browser has opened beforehand
+            with contextlib.suppress(OSError):
+                connection.shutdown(socket.SHUT_RDWR)
 
     @property
     def address(self) -> str:
@@ -67,8 +79,6 @@ class Live:
 
     def _answer(self, environ: dict[str, Any], start: Callable[..., Any]) -> Iterable[bytes]:
         path = environ.get("SCRIPT_NAME", "") + environ["PATH_INFO"]
-        if not self.here:
-            raise ConnectionError("gone")  # a connection that the browser had opened beforehand
         self.asked.append(path)
         time.sleep(self.delay(path))
         if self.refuse(path):

@@ -31,6 +31,13 @@ class Screen:
             self.settle()
         return self
 
+    def go(self, fragment: str, settle: bool = True) -> Screen:
+        """Follow a link in the page that is open."""
+        self.page.evaluate("link => { location.hash = link }", fragment)
+        if settle:
+            self.settle()
+        return self
+
     def settle(self, timeout: float = 10.0) -> None:
         """Wait until nothing moves and nothing is awaited, and the link has followed."""
         end = time.monotonic() + timeout

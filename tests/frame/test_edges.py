@@ -27,8 +27,8 @@ def handle(screen, name):
     return middle(screen, f"[role=slider][aria-label='{name}']")
 
 
-def test_dragging_the_bright_end_down_brightens_the_map(open_screen):
-    screen = open_screen("#u=50&v=37&width=60&tone=3e3:3e8")
+def test_dragging_the_bright_end_down_brightens_the_map(screen):
+    screen.go("#u=50&v=37&width=60&tone=3e3:3e8")
     before = screen.pixels()[:, :, 1].mean()
     x, y = handle(screen, "Bright end")
     drag(screen, (x, y), (x, y + 40))
@@ -37,8 +37,8 @@ def test_dragging_the_bright_end_down_brightens_the_map(open_screen):
     assert screen.pixels()[:, :, 1].mean() > before + 5
 
 
-def test_a_number_can_be_typed_for_an_end(open_screen):
-    screen = open_screen("#u=50&v=37&width=60&tone=3e3:3e8")
+def test_a_number_can_be_typed_for_an_end(screen):
+    screen.go("#u=50&v=37&width=60&tone=3e3:3e8")
     screen.page.get_by_role("slider", name="Dark end").focus()
     screen.page.keyboard.press("Enter")
     screen.page.keyboard.type("1.5e4")
@@ -47,8 +47,8 @@ def test_a_number_can_be_typed_for_an_end(open_screen):
     assert screen.page.get_by_role("slider", name="Dark end").get_attribute("aria-valuetext") == "15000 M☉/kpc²"
 
 
-def test_the_automatic_tone_spans_the_values_in_view(open_screen, atlas):
-    screen = open_screen("#u=50&v=37&width=20")
+def test_the_automatic_tone_spans_the_values_in_view(screen, atlas):
+    screen.go("#u=50&v=37&width=20")
     screen.page.wait_for_timeout(300)
     screen.page.get_by_text("auto", exact=True).click()
     screen.settle()
@@ -59,8 +59,8 @@ def test_the_automatic_tone_spans_the_values_in_view(open_screen, atlas):
     assert high < 2 * values.max() and low > 0.5 * values.min()
 
 
-def test_a_click_on_a_slab_looks_at_that_slab_alone(open_screen):
-    screen = open_screen("#u=50&v=37&width=60&depth=0:33.3333")
+def test_a_click_on_a_slab_looks_at_that_slab_alone(screen):
+    screen.go("#u=50&v=37&width=60&depth=0:33.3333")
     box = screen.page.locator("#depth .field").bounding_box()
     screen.page.mouse.click(box["x"] + 0.8 * box["width"], box["y"] + 0.7 * box["height"])
     screen.settle()
@@ -68,16 +68,16 @@ def test_a_click_on_a_slab_looks_at_that_slab_alone(open_screen):
     assert (round(low, 3), round(high, 3)) == (66.667, 100)
 
 
-def test_the_depth_window_opens_by_its_handle(open_screen):
-    screen = open_screen("#u=50&v=37&width=60&depth=0:33.3333")
+def test_the_depth_window_opens_by_its_handle(screen):
+    screen.go("#u=50&v=37&width=60&depth=0:33.3333")
     x, y = handle(screen, "Far end of the depth window")
     width = screen.page.locator("#depth .field").bounding_box()["width"]
     drag(screen, (x, y), (x + width / 3, y))
     assert float(screen.link()["depth"].split(":")[1]) == pytest.approx(66.667, abs=1e-3)
 
 
-def test_the_depth_window_slides_as_one(open_screen):
-    screen = open_screen("#u=50&v=37&width=60&depth=0:33.3333")
+def test_the_depth_window_slides_as_one(screen):
+    screen.go("#u=50&v=37&width=60&depth=0:33.3333")
     x, y = handle(screen, "Depth window")
     width = screen.page.locator("#depth .field").bounding_box()["width"]
     drag(screen, (x, y), (x + 2 * width / 3, y))
@@ -85,8 +85,8 @@ def test_the_depth_window_slides_as_one(open_screen):
     assert (round(low, 3), round(high, 3)) == (66.667, 100)
 
 
-def test_the_thumb_of_the_ladder_sets_the_width_in_view(open_screen):
-    screen = open_screen("#u=50&v=37&width=60")
+def test_the_thumb_of_the_ladder_sets_the_width_in_view(screen):
+    screen.go("#u=50&v=37&width=60")
     x, y = handle(screen, "Width in view")
     drag(screen, (x - 20, y), (x - 20, y + 150))
     thumb = screen.page.get_by_role("slider", name="Width in view")
@@ -95,8 +95,8 @@ def test_the_thumb_of_the_ladder_sets_the_width_in_view(open_screen):
     assert float(thumb.get_attribute("aria-valuenow")) == pytest.approx(width, rel=1e-3)
 
 
-def test_rungs_that_fit_are_as_long_as_they_are_on_the_map(open_screen):
-    screen = open_screen("#u=50&v=37&width=60")
+def test_rungs_that_fit_are_as_long_as_they_are_on_the_map(screen):
+    screen.go("#u=50&v=37&width=60")
     lengths = screen.page.evaluate("[...document.querySelectorAll('#scale .rung.true')].map(r => r.getBBox().width)")
     per_mpc = screen.map_box()["width"] / 60
     rungs = [m * 10.0**p for p in range(-3, 3) for m in (1, 2, 5)]
@@ -106,21 +106,21 @@ def test_rungs_that_fit_are_as_long_as_they_are_on_the_map(open_screen):
 
 
 @pytest.mark.parametrize("measure, said", [("comoving", "60 Mpc"), ("proper", "40 Mpc"), ("angle", "1.8°")])
-def test_lengths_read_as_comoving_proper_or_angle(open_screen, measure, said):
+def test_lengths_read_as_comoving_proper_or_angle(screen, measure, said):
     # z = 0.5: a = 2/3; the invented atlas says 9.27 comoving kpc per arcsecond.
-    screen = open_screen(f"#u=50&v=37&width=60&lengths={measure}")
+    screen.go(f"#u=50&v=37&width=60&lengths={measure}")
     assert screen.page.inner_text("#scale .number") == said
 
 
-def test_slabs_stand_as_high_as_their_mass(open_screen, atlas):
-    screen = open_screen("#u=50&v=37&width=60")
+def test_slabs_stand_as_high_as_their_mass(screen, atlas):
+    screen.go("#u=50&v=37&width=60")
     heights = screen.page.evaluate("[...document.querySelectorAll('#depth .bar')].map(r => r.getBBox().height)")
     totals = np.array(atlas.sheet("gas")["totals"])
     assert np.allclose(np.array(heights) / max(heights), totals / totals.max(), atol=0.02)
 
 
-def test_a_drag_over_the_census_brushes_it(open_screen):
-    screen = open_screen("#u=50&v=37&width=100")
+def test_a_drag_over_the_census_brushes_it(screen):
+    screen.go("#u=50&v=37&width=100")
     screen.page.wait_for_selector("#census .bar")
     box = screen.page.locator("#census .field").bounding_box()
     y = box["y"] + 0.3 * box["height"]

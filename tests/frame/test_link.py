@@ -59,15 +59,15 @@ def test_a_change_of_the_address_is_followed(open_screen):
         ("#%E0%A4%A=1", "could not be read"),
     ],
 )
-def test_a_bad_link_is_answered_in_a_line_and_shows_what_it_can(open_screen, fragment, said):
-    screen = open_screen(fragment, settle=False)
+def test_a_bad_link_is_answered_in_a_line_and_shows_what_it_can(screen, fragment, said):
+    screen.go(fragment, settle=False)
     screen.wait_for_status(said)
     screen.settle()
     assert screen.pixels()[:, :, :3].max() > 100 and not screen.errors
 
 
-def test_the_word_copies_the_link(open_screen):
-    screen = open_screen("#u=20&v=20&width=30")
+def test_the_word_copies_the_link(screen):
+    screen.go("#u=20&v=20&width=30")
     screen.page.get_by_text("copy link").click()
     screen.page.wait_for_timeout(100)
     assert screen.page.evaluate("navigator.clipboard.readText()") == screen.page.url

@@ -27,7 +27,7 @@ def expected(atlas, sheet, column, row, shape, slabs=None):
 
 def check_colours(screen, atlas, sheet, curve, ramp, low, high, slabs=None, depth=""):
     fragment, shape = aligned(screen, 700, 480, 4)
-    screen.open(f"{fragment}&sheet={sheet}&tone={low}:{high}&curve={curve}&ramp={ramp}{depth}")
+    screen.go(f"{fragment}&sheet={sheet}&tone={low}:{high}&curve={curve}&ramp={ramp}{depth}")
     shown = screen.pixels()[:, :, :3].astype(int)
     rows = np.arange(shown.shape[0]) // 4
     columns = np.arange(shown.shape[1]) // 4
@@ -40,22 +40,22 @@ def check_colours(screen, atlas, sheet, curve, ramp, low, high, slabs=None, dept
 
 
 @pytest.mark.parametrize("curve, low, high", [("log", LOW, HIGH), ("linear", 2e4, 4e6), ("asinh", 2e4, 4e6)])
-def test_colours_on_screen_are_the_numbers_in_the_atlas(open_screen, atlas, curve, low, high):
-    check_colours(open_screen(), atlas, "gas", curve, "strandline", low, high)
+def test_colours_on_screen_are_the_numbers_in_the_atlas(screen, atlas, curve, low, high):
+    check_colours(screen, atlas, "gas", curve, "strandline", low, high)
 
 
-def test_a_mean_is_coloured_from_the_numbers_in_the_atlas(open_screen, atlas):
-    check_colours(open_screen(), atlas, "temperature", "log", "kelpfire", 4e3, 4e5)
+def test_a_mean_is_coloured_from_the_numbers_in_the_atlas(screen, atlas):
+    check_colours(screen, atlas, "temperature", "log", "kelpfire", 4e3, 4e5)
 
 
-def test_a_window_of_some_slabs_shows_their_sum(open_screen, atlas):
+def test_a_window_of_some_slabs_shows_their_sum(screen, atlas):
     depth = "&depth=0:66.666667"
-    check_colours(open_screen(), atlas, "gas", "log", "strandline", LOW, HIGH, slice(0, 2), depth)
+    check_colours(screen, atlas, "gas", "log", "strandline", LOW, HIGH, slice(0, 2), depth)
 
 
-def test_a_window_of_some_slabs_shows_the_weighted_mean(open_screen, atlas):
+def test_a_window_of_some_slabs_shows_the_weighted_mean(screen, atlas):
     depth = "&depth=33.333333:100"
-    check_colours(open_screen(), atlas, "temperature", "log", "kelpfire", 4e3, 4e5, slice(1, 3), depth)
+    check_colours(screen, atlas, "temperature", "log", "kelpfire", 4e3, 4e5, slice(1, 3), depth)
 
 
 @pytest.mark.parametrize("ratio", [1, 1.25, 2])
@@ -68,16 +68,16 @@ def test_no_seam_shows_at_any_fractional_zoom(open_screen, ratio):
         assert len(np.unique(shown, axis=0)) == 1, f"width {width}"
 
 
-def test_the_outermost_view_shows_the_whole_volume(open_screen):
-    screen = open_screen("#u=20&v=30&width=5")
+def test_the_outermost_view_shows_the_whole_volume(screen):
+    screen.go("#u=20&v=30&width=5")
     screen.press("0")
     box = screen.map_box()
     corners = [screen.at(u, v) for u in (0, 100) for v in (0, 75)]
     assert all(box["x"] < x < box["x"] + box["width"] and box["y"] < y < box["y"] + box["height"] for x, y in corners)
 
 
-def test_the_innermost_view_goes_past_one_pixel_with_crisp_edges(open_screen):
-    screen = open_screen("#u=50.01&v=40.01&width=3&markers=off&tone=3e3:3e6")
+def test_the_innermost_view_goes_past_one_pixel_with_crisp_edges(screen):
+    screen.go("#u=50.01&v=40.01&width=3&markers=off&tone=3e3:3e6")
     screen.press("+", 12)
     side = screen.map_box()["width"] / screen.place()[2] * PIXEL
     assert side > 100
@@ -86,8 +86,8 @@ def test_the_innermost_view_goes_past_one_pixel_with_crisp_edges(open_screen):
     assert 5 < len(edges) <= np.ceil(len(row) / side)
 
 
-def test_values_are_written_on_wide_pixels(open_screen):
-    screen = open_screen(f"#u=50.01&v=40.01&width={4 * PIXEL}&markers=off")
+def test_values_are_written_on_wide_pixels(screen):
+    screen.go(f"#u=50.01&v=40.01&width={4 * PIXEL}&markers=off")
     screen.page.wait_for_timeout(200)
     screen.picture("pixels")
     assert (screen.pixels("#marks")[:, :, 3] > 200).sum() > 500

@@ -14,7 +14,7 @@ def read_one(atlas, sheet, u, v, slabs=None):
 def point(screen, u, v):
     """Bring the middle of a pixel under the cursor; the place that the cursor, which moves by whole pixels, comes to."""
     u, v = (np.floor(u / PIXEL) + 0.5) * PIXEL, (np.floor(v / PIXEL) + 0.5) * PIXEL
-    screen.open(f"#u={u + 0.4:.6f}&v={v - 0.3:.6f}&width=6&{screen.wanted}")
+    screen.go(f"#u={u + 0.4:.6f}&v={v - 0.3:.6f}&width=6&{screen.wanted}")
     x, y = map(round, screen.at(u, v))
     screen.page.mouse.move(x, y)
     return screen.under(x, y)
@@ -30,16 +30,14 @@ def point(screen, u, v):
         ("temperature", "0:66.67", slice(0, 2)),
     ],
 )
-def test_the_reading_is_the_number_in_the_atlas(open_screen, atlas, sheet, depth, slabs):
-    screen = open_screen()
+def test_the_reading_is_the_number_in_the_atlas(screen, atlas, sheet, depth, slabs):
     screen.wanted = f"sheet={sheet}" + (f"&depth={depth}" if depth else "")
     for spot in SPOTS:
         u, v = point(screen, *spot)
         assert screen.value() == pytest.approx(read_one(atlas, sheet, u, v, slabs), rel=2e-6)
 
 
-def test_the_reading_says_unit_and_place(open_screen):
-    screen = open_screen()
+def test_the_reading_says_unit_and_place(screen):
     screen.wanted = "sheet=gas"
     u, v = point(screen, 31.204, 40.007)
     screen.page.wait_for_timeout(150)
@@ -48,22 +46,21 @@ def test_the_reading_says_unit_and_place(open_screen):
     assert f"x {u:.3f} Mpc" in text and f"y {v:.3f} Mpc" in text
 
 
-def test_a_place_without_anything_reads_as_nothing(open_screen):
-    screen = open_screen("#u=10&v=1&width=6&sheet=temperature")
+def test_a_place_without_anything_reads_as_nothing(screen):
+    screen.go("#u=10&v=1&width=6&sheet=temperature")
     screen.page.mouse.move(*screen.at(10, 1))
     assert screen.value() is None
     assert "nothing here" in screen.page.inner_text("#reading")
 
 
-def test_outside_the_volume_the_reading_says_so(open_screen):
-    screen = open_screen("#width=200")
+def test_outside_the_volume_the_reading_says_so(screen):
+    screen.go("#width=200")
     screen.page.mouse.move(*screen.at(50, 75.5))
     assert screen.value() is None
     assert "outside" in screen.page.inner_text("#reading")
 
 
-def test_one_key_copies_the_reading_with_unit_and_place(open_screen, atlas):
-    screen = open_screen()
+def test_one_key_copies_the_reading_with_unit_and_place(screen, atlas):
     screen.wanted = "sheet=gas"
     u, _ = point(screen, 31.204, 40.007)
     value = screen.value()
@@ -75,7 +72,7 @@ def test_one_key_copies_the_reading_with_unit_and_place(open_screen, atlas):
     assert f"x = {u:.3f}" in copied
 
 
-def test_without_a_cursor_the_middle_of_the_map_is_read(open_screen, atlas):
+def test_without_a_cursor_the_middle_of_the_map_is_read(screen, atlas):
     u, v = 500.5 * PIXEL, 700.5 * PIXEL
-    screen = open_screen(f"#u={u:.6f}&v={v:.6f}&width=6")
+    screen.go(f"#u={u:.6f}&v={v:.6f}&width=6")
     assert screen.value() == pytest.approx(read_one(atlas, "gas", u, v), rel=2e-6)

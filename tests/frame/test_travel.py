@@ -24,8 +24,8 @@ def test_the_wheel_zooms_about_the_pointer(open_screen, notches, motion):
     assert np.hypot(after[0] - before[0], after[1] - before[1]) < 0.6 * screen.place()[2] / box["width"]
 
 
-def test_a_drag_takes_the_place_under_the_hand_along(open_screen):
-    screen = open_screen(START)
+def test_a_drag_takes_the_place_under_the_hand_along(screen):
+    screen.go(START)
     place = screen.under(500, 400)
     screen.page.mouse.move(500, 400)
     screen.page.mouse.down()
@@ -46,8 +46,8 @@ def test_a_fling_goes_on_after_the_hand_has_let_go(open_screen):
     assert screen.at(*place)[0] < 480
 
 
-def test_a_double_click_zooms_about_its_place(open_screen):
-    screen = open_screen(START)
+def test_a_double_click_zooms_about_its_place(screen):
+    screen.go(START)
     before = screen.under(700, 300)
     screen.page.mouse.dblclick(700, 300)
     screen.settle()
@@ -86,8 +86,8 @@ def test_two_fingers_pinch_about_the_point_between_them(open_screen):
         ("-", 0, 0, 1),
     ],
 )
-def test_keys_travel_and_zoom(open_screen, key, du, dv, zoom):
-    screen = open_screen(START, motion=True)
+def test_keys_travel_and_zoom(screen, key, du, dv, zoom):
+    screen.go(START)
     u, v, width = screen.place()
     screen.press(key)
     moved = screen.place()
@@ -109,8 +109,8 @@ def test_keys_travel_and_zoom(open_screen, key, du, dv, zoom):
         ("n", "object", "alone"),
     ],
 )
-def test_keys_work_the_edges(open_screen, key, part, value):
-    screen = open_screen("#u=50&v=50&width=60")
+def test_keys_work_the_edges(screen, key, part, value):
+    screen.go("#u=50&v=50&width=60")
     screen.page.wait_for_timeout(300)
     screen.press(key)
     assert screen.link()[part] == value

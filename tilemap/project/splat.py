@@ -18,6 +18,14 @@ from tilemap.project.stamps import CELLS, FIRST_POWER, LARGE_PX, REACH, SMALL_PX
 
 MARGIN = 48
 """Pixels around an image that drawing may touch: twice LARGE_PX, a row's spare width, and a pad for refinement."""
+CELL_PX = 48
+"""Particles are drawn cell by cell of this size, so that the pixels they touch stay in cache. It is also the height of
+the bands that workers share out: a stamp reaches at most 17 pixels out of its band, so two bands of the same parity
+touch no pixel together."""
+FEW = 64
+"""Particles of one cell in a row that are drawn on the image itself; more are piled up first."""
+RUN = 1024
+"""Particles after which a single-precision pile goes to the double-precision one."""
 UNIT_SUM_PX = 256.0
 """Support radius from which a stamp is summed as an integral, not pixel by pixel."""
 
@@ -208,30 +216,112 @@ def _draw_wide(image, channels, x, y, r, first, second, table):
 
 
 @njit(**_FAST)
-def _draw(image, channels, records, order, scale, value, cumulative, table):
-    above = np.zeros(32, dtype=np.float32)
+def _draw_some(fine, image, wide, channels, records, order, scale, corner, value, cumulative, table, above):
+    """Draw particles one by one: small ones on `fine`, those of a row's width on `image`, both from `corner` on.
+
+    Returns the largest radius of those.
+    """
     share = scale * scale
+    largest = np.float32(0.0)
     for index in order:
-        x = records[index, 0] * scale
-        y = records[index, 1] * scale
+        x = records[index, 0] * scale - corner[0]
+        y = records[index, 1] * scale - corner[1]
         r = records[index, 2] * scale
         first = records[index, 3 + value] * share
         second = records[index, 4 + value] * share if channels == 2 else np.float32(0.0)
+        if r > np.float32(LARGE_PX):
+            _draw_wide(wide, channels, x + corner[0], y + corner[1], r, first, second, table)
+            continue
+        largest = max(largest, r)
         if r < np.float32(SMALL_PX):
-            _draw_small(image, channels, x, y, r, first, second, cumulative, above)
-        elif r <= np.float32(LARGE_PX):
-            # A row of `width` pixels from floor(x - R') on covers 2 R' + 1; R'^2 = r^2 + REACH.
-            if r * r <= np.float32(7.5 * 7.5 - REACH):
-                rest = _draw_rows_16(image, channels, x, y, r, first, second, table)
-            elif r * r <= np.float32(11.5 * 11.5 - REACH):
-                rest = _draw_rows_24(image, channels, x, y, r, first, second, table)
-            elif r * r <= np.float32(15.5 * 15.5 - REACH):
-                rest = _draw_rows_32(image, channels, x, y, r, first, second, table)
-            else:
-                rest = _draw_rows_40(image, channels, x, y, r, first, second, table)
-            _give(image, channels, x, y, first * rest, second * rest)
+            _draw_small(fine, channels, x, y, r, first, second, cumulative, above)
+            continue
+        # A row of `width` pixels from floor(x - R') on covers 2 R' + 1; R'^2 = r^2 + REACH.
+        if r * r <= np.float32(7.5 * 7.5 - REACH):
+            rest = _draw_rows_16(image, channels, x, y, r, first, second, table)
+        elif r * r <= np.float32(11.5 * 11.5 - REACH):
+            rest = _draw_rows_24(image, channels, x, y, r, first, second, table)
+        elif r * r <= np.float32(15.5 * 15.5 - REACH):
+            rest = _draw_rows_32(image, channels, x, y, r, first, second, table)
         else:
-            _draw_wide(image, channels, x, y, r, first, second, table)
+            rest = _draw_rows_40(image, channels, x, y, r, first, second, table)
+        _give(image, channels, x, y, first * rest, second * rest)
+    return largest
+
+
+@njit(**_FAST)
+def _move(source, target, channels, box, down, across):
+    """Add what is in the box to another image, so far down and across, and clear it."""
+    for channel in range(channels):
+        for row in range(box[0], min(box[1], target.shape[1] - down)):
+            here = source[channel, row, box[2] : min(box[3], target.shape[2] - across)]
+            there = target[channel, row + down, box[2] + across :]
+            for k in range(len(here)):
+                there[k] += here[k]
+                here[k] = 0
+
+
+@njit(**_FAST)
+def _cell_of(records, index, scale, cells_y, cells_x):
+    row = min(max(int(math.floor(records[index, 1] * scale / np.float32(CELL_PX))), 0), cells_y - 1)
+    column = min(max(int(math.floor(records[index, 0] * scale / np.float32(CELL_PX))), 0), cells_x - 1)
+    return row * cells_x + column
+
+
+@njit(**_FAST)
+def _draw(image, wide, channels, records, order, scale, value, cumulative, table):
+    """Draw particles sorted by cell; where many of one cell follow each other, pile them up aside first.
+
+    A single-precision pixel that a million particles are added to one by one loses 1e-4 of them, and of a million
+    equal ones 1e-3. Piles are in double precision, and wide rows get there every `RUN` particles.
+    """
+    above = np.zeros(32, dtype=np.float32)
+    side = CELL_PX + 2 * MARGIN
+    pile = np.zeros((channels, side, side), dtype=np.float64)
+    rows = np.zeros((channels, side, side), dtype=np.float32)
+    cells_y = max(1, -(-(image.shape[1] - 2 * MARGIN) // CELL_PX))
+    cells_x = max(1, -(-(image.shape[2] - 2 * MARGIN) // CELL_PX))
+    box = np.zeros(4, dtype=np.int64)
+    corner, nowhere = np.zeros(2, dtype=np.float32), np.zeros(2, dtype=np.float32)
+    start, count = 0, len(order)
+    while start < count:
+        cell = _cell_of(records, order[start], scale, cells_y, cells_x)
+        if start + FEW > count or _cell_of(records, order[start + FEW - 1], scale, cells_y, cells_x) != cell:
+            some = order[start : start + FEW]
+            _draw_some(image, image, wide, channels, records, some, scale, nowhere, value, cumulative, table, above)
+            start += FEW
+            continue
+        row, column = cell // cells_x, cell % cells_x
+        corner[0], corner[1] = column * CELL_PX, row * CELL_PX
+        largest = np.float32(0.0)
+        inside = True
+        while inside and start < count:
+            stop = min(start + RUN, count)
+            if _cell_of(records, order[stop - 1], scale, cells_y, cells_x) != cell:
+                inside = False
+                low = start
+                while stop - low > 1:  # the first of another cell lies in (low, stop)
+                    middle = (low + stop) // 2
+                    if _cell_of(records, order[middle], scale, cells_y, cells_x) == cell:
+                        low = middle
+                    else:
+                        stop = middle
+            some = order[start:stop]
+            reach = _draw_some(
+                pile, rows, wide, channels, records, some, scale, corner, value, cumulative, table, above
+            )
+            largest = max(largest, reach)
+            # A stamp reaches less than two pixels beyond its kernel; cells at the rim also hold what lies outside.
+            touched = int(largest) + 4
+            box[0] = MARGIN - touched if row > 0 else 0
+            box[1] = MARGIN + CELL_PX + touched if row < cells_y - 1 else side
+            box[2] = MARGIN - touched if column > 0 else 0
+            box[3] = MARGIN + CELL_PX + touched if column < cells_x - 1 else side
+            if reach >= np.float32(SMALL_PX):
+                _move(rows, pile, channels, box, 0, 0)
+            start = stop
+            inside = inside and start < count and _cell_of(records, order[start], scale, cells_y, cells_x) == cell
+        _move(pile, image, channels, box, row * CELL_PX, column * CELL_PX)
 
 
 def draw(
@@ -241,6 +331,7 @@ def draw(
     scale: float,
     stamps: Stamps,
     finest: bool,
+    wide: bool = True,
 ) -> None:
     """Add particles to an image, every channel.
 
@@ -254,18 +345,23 @@ def draw(
         value per pixel of the finest. Particles whose radius here is at most LARGE_PX must keep their stamp
         inside the margin; wider ones are clipped.
     order : int64 (m,)
-        Which records to draw, in this order.
+        Which records to draw, in this order: what `cell_order` gave for cells of CELL_PX, or rows of cells of it.
     scale : float
         2^-level.
     stamps : Stamps
     finest : bool
         Whether the image holds averages over pixels (the finest level) or spline coefficients (coarser ones).
+    wide : bool
+        Whether any particle may be wider than LARGE_PX here: those need another image, in double precision.
     """
     channels = image.shape[0]
     table = stamps.averaged if finest else stamps.spline
     for start in range(0, channels, 2):
         pair = image[start : start + 2]
-        _draw(pair, pair.shape[0], records, order, np.float32(scale), start, stamps.cumulative, table)
+        exact = np.zeros(pair.shape if wide else (1, 1, 1), dtype=np.float64)
+        _draw(pair, exact, pair.shape[0], records, order, np.float32(scale), start, stamps.cumulative, table)
+        if wide:
+            pair += exact
 
 
 @njit(**_FAST)

@@ -14,14 +14,9 @@ from numba import njit
 from numpy.typing import NDArray
 
 from tilemap.project.scatter import PAD, Buckets, Plan
-from tilemap.project.splat import MARGIN, cell_order, draw
+from tilemap.project.splat import CELL_PX, MARGIN, cell_order, draw
 from tilemap.project.stamps import Stamps
 from tilemap.runners.local import LocalRunner
-
-CELL_PX = 48
-"""Particles are drawn cell by cell of this size, so that the pixels they touch stay in cache. It is also the height of
-the bands that workers share out: a stamp reaches at most 17 pixels out of its band, so two bands of the same parity
-touch no pixel together."""
 
 # One row of weights gives the left (upper) child of a coefficient from those 2 before it to 2 after it; mirrored, the
 # right one. Two-scale relation of the quartic B-spline between pixel grids: binomials of 5 over 16.
@@ -94,7 +89,7 @@ class Cycle:
         records = parts[0] if len(parts) == 1 else np.concatenate(parts)
         scale = 1.0 / (1 << level)
         order, _ = cell_order(records, scale, CELL_PX, (image.shape[1] - 2 * MARGIN, image.shape[2] - 2 * MARGIN))
-        draw(image, records, order, scale, self.stamps, finest=level == 0)
+        draw(image, records, order, scale, self.stamps, finest=level == 0, wide=level == self.plan.top)
 
     def _draw_shared(
         self, image: NDArray[np.float32], parts: list[NDArray[np.float32]], level: int, runner: LocalRunner
@@ -110,7 +105,7 @@ class Cycle:
             for band in bands:
                 for records, (order, starts) in zip(parts, sorted_parts, strict=True):
                     ours = order[starts[band] : starts[band + 1]]
-                    draw(image, records, ours, scale, self.stamps, finest=level == 0)
+                    draw(image, records, ours, scale, self.stamps, finest=level == 0, wide=level == self.plan.top)
 
         count = len(sorted_parts[0][1]) - 1
         if level == self.plan.top:  # where kernels may be wider than a band

@@ -93,7 +93,7 @@ export class Frame {
     const facts = [];
     if (redshift !== null && redshift !== undefined && atlas.view.coordinates === 'comoving') facts.push(say('epoch', { z: fixed(redshift, 2) }));
     if (age) facts.push(say('age', { age: fixed(age, 1) }));
-    at('title').replaceChildren(make('h1', { title: atlas.json.about ?? '' }, atlas.title || say('untitled')), make('div.dim', {}, facts.join(' · ')));
+    at('title').replaceChildren(make('h1', {}, make('a', { href: '../', title: atlas.json.about ?? '' }, atlas.title || say('untitled'))), make('div.dim', {}, facts.join(' · ')));
     if (atlas.epochs.length > 1) at('title').append(this.epochs(atlas.epochs));
     const keys = make('button.word.act', { type: 'button', click: () => this.showKeys() }, say('keys'));
     at('links').replaceChildren(this.linking.word, keys);
@@ -137,7 +137,7 @@ export class Frame {
   moved() {
     this.askTiles(60);
     this.askCounts(120);
-    this.catalogue.ask(this.motion.view, 250);
+    this.catalogue.ask(this.motion.view, 300);
     this.linking?.soon();
     this.wake();
   }

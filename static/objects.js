@@ -16,17 +16,17 @@ export class Catalogue {
     this.delay = 0;
     /** @type {AbortController|null} */ this.running = null;
     this.last = '';
-    /** the rectangle that the last answer covers */
-    this.covered = '';
+    /** @type {import('./view.js').View|null} the view to ask about */ this.view = null;
   }
 
-  /** @param {import('./view.js').View} view @param {number} wait ms of rest before asking */
+  /** @param {import('./view.js').View} view @param {number} wait ms until it is asked, so that a moving view asks only so often */
   ask(view, wait) {
     if (!this.state.epoch.catalogue) return;
-    const key = this.question(view);
-    if (key === this.last) return;
+    this.view = view;
+    if (this.question(view) === this.last) return;
+    if (this.timer && !this.delay) return;
     clearTimeout(this.timer);
-    this.timer = window.setTimeout(() => this.put(view, key), wait);
+    this.timer = window.setTimeout(() => this.put(), wait);
   }
 
   /** @param {import('./view.js').View} view */
@@ -35,8 +35,10 @@ export class Catalogue {
     return JSON.stringify([atlas.id, epoch.name, u0, u1, v0, v1, slabs, brush]);
   }
 
-  /** @param {import('./view.js').View} view @param {string} key */
-  async put(view, key) {
+  async put() {
+    this.timer = 0;
+    const { view } = this;
+    const key = this.question(view);
     this.running?.abort();
     const control = new AbortController();
     this.running = control;
@@ -61,7 +63,8 @@ export class Catalogue {
     } catch {
       if (control.signal.aborted) return;
       this.delay = Math.min(this.delay * 2 || 1000, 15000);
-      this.timer = window.setTimeout(() => this.put(view, key), this.delay);
+      clearTimeout(this.timer);
+      this.timer = window.setTimeout(() => this.put(), this.delay);
     }
   }
 

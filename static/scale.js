@@ -91,12 +91,14 @@ export class ScaleEdge {
     const thumb = this.y(view.width);
     const marks = [];
     let last = -Infinity;
+    const line = (this.label.offsetHeight || 16) * 1.05;
     for (const rung of rungs(this.bottom, this.top, measure)) {
       const y = Math.round(this.y(rung.length)) + 0.5;
       const reach = Math.min(rung.length * view.scale, w);
       const fits = rung.length * view.scale <= w;
       if (reach >= 0.7) marks.push(svg('path', { class: fits ? 'rung true' : 'rung', d: `M0 ${y}H${reach.toFixed(1)}` }));
-      const clear = Math.abs(y - 4 - thumb) > 15 && y - last > 15 && y > 24 && y < h - 20;
+      // Words stand above their rungs, and the words of the thumb above the thumb; none may touch another.
+      const clear = Math.abs(y - thumb) > line && y - last > line && y > 24 && y < h - 20;
       if (clear) {
         marks.push(svg('text', { x: w, y: y - 3, class: rung.major ? 'major' : '' }, rung.text));
         last = y;

@@ -128,16 +128,17 @@ export class State {
 function usualEnds(sheet) {
   const p = sheet.percentiles ?? {};
   const [least, most] = sheet.range ?? [1, 10];
-  let lo = p['25'] ?? least;
-  let hi = p['99.9'] ?? most;
-  if (sheet.coding === 'log') {
+  const log = sheet.coding === 'log';
+  let lo = p[log ? '25' : '1'] ?? least;
+  let hi = p[log ? '99.9' : '99'] ?? most;
+  if (log) {
     // The brightest knots are far above any percentile of the area: leave them a third of the way to the top.
     if (most > hi) hi *= (most / hi) ** 0.35;
     if (!(lo > 0)) lo = hi / 1e4;
     // A sheet that is nearly empty, such as stars, would begin in the noise.
     lo = Math.max(lo, hi / 1e6);
   }
-  if (!(lo < hi)) [lo, hi] = sheet.coding === 'log' ? [hi / 10, hi * 1.001] : [lo - 1, lo + 1];
+  if (!(lo < hi)) [lo, hi] = log ? [hi / 10, hi * 1.001] : [lo - 1, lo + 1];
   return { lo: rounded(lo, 3), hi: rounded(hi, 3) };
 }
 

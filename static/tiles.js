@@ -21,7 +21,7 @@ const LONGEST_DELAY = 15000;
 
 export class Tiles {
   /** @param {Listener} listener @param {{workers?: number, budget?: number}} [settings] budget in bytes */
-  constructor(listener, { workers = poolSize(), budget = 256e6 } = {}) {
+  constructor(listener, { workers = poolSize(), budget = room() } = {}) {
     this.listener = listener;
     this.budget = budget;
     /** @type {Map<string, Tile>} */
@@ -281,4 +281,9 @@ export class Tiles {
 /** Two workers on a small machine, four at most. */
 function poolSize() {
   return Math.min(Math.max((navigator.hardwareConcurrency ?? 2) - 1, 2), 4);
+}
+
+/** Bytes that tiles may take: less on a small device, as far as the browser says (`deviceMemory`, GiB). */
+function room() {
+  return Math.min(/** @type {any} */ (navigator).deviceMemory ?? 8, 8) * 32e6;
 }

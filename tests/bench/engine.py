@@ -87,7 +87,7 @@ def splat() -> Iterator[Figure]:
         level = 1 if radius > 15.4 else 0
         records[:, 2], records[:, 3] = radius, 1.0
         image = np.zeros((1, (side >> level) + 2 * MARGIN, (side >> level) + 2 * MARGIN), dtype=np.float32)
-        order, _ = cell_order(records, 1.0 / (1 << level), 64, (side >> level, side >> level))
+        order, _ = cell_order(records, 1.0 / (1 << level), (side >> level, side >> level))
         drawn = lambda: draw(image, records, order, 1.0 / (1 << level), _stamps(), finest=level == 0)  # noqa: B023, E731
         drawn()
         ours, theirs = best_of(7, drawn, stream)

@@ -365,16 +365,12 @@ def draw(
 
 
 @njit(**_FAST)
-def _cell_order(records, scale, cell_px, cells_x, cells_y):
+def _cell_order(records, scale, cells_x, cells_y):
     """Counting sort by cell, row of cells by row: the order, and where each row of cells starts."""
     count = np.zeros(cells_x * cells_y + 1, dtype=np.int64)
     cell = np.empty(len(records), dtype=np.int32)
     for index in range(len(records)):
-        x = records[index, 0] * scale
-        y = records[index, 1] * scale
-        cx = min(max(int(math.floor(x / cell_px)), 0), cells_x - 1)
-        cy = min(max(int(math.floor(y / cell_px)), 0), cells_y - 1)
-        cell[index] = cy * cells_x + cx
+        cell[index] = _cell_of(records, index, scale, cells_y, cells_x)
         count[cell[index] + 1] += 1
     for k in range(cells_x * cells_y):
         count[k + 1] += count[k]
@@ -389,14 +385,13 @@ def _cell_order(records, scale, cell_px, cells_x, cells_y):
 
 
 def cell_order(
-    records: NDArray[np.float32], scale: float, cell_px: int, size: tuple[int, int]
+    records: NDArray[np.float32], scale: float, size: tuple[int, int]
 ) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
-    """Order in which drawing stays in cache: particles sorted by cells of `cell_px` pixels, row of cells by row.
+    """Order in which drawing stays in cache: particles sorted by cells of CELL_PX, row of cells by row.
 
     Parameters
     ----------
     records, scale : as in `draw`
-    cell_px : int
     size : (rows, columns) of the image without its margin
 
     Returns
@@ -404,5 +399,5 @@ def cell_order(
     order : int64 (n,)
     bands : int64 (rows of cells + 1,), where each row of cells starts in `order`
     """
-    cells_y, cells_x = (max(1, -(-side // cell_px)) for side in size)
-    return _cell_order(records, np.float32(scale), np.float32(cell_px), cells_x, cells_y)
+    cells_y, cells_x = (max(1, -(-side // CELL_PX)) for side in size)
+    return _cell_order(records, np.float32(scale), cells_x, cells_y)

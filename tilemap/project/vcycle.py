@@ -14,7 +14,7 @@ from numba import njit
 from numpy.typing import NDArray
 
 from tilemap.project.scatter import PAD, Buckets, Plan
-from tilemap.project.splat import CELL_PX, MARGIN, cell_order, draw
+from tilemap.project.splat import MARGIN, cell_order, draw
 from tilemap.project.stamps import Stamps
 from tilemap.runners.local import LocalRunner
 
@@ -88,7 +88,7 @@ class Cycle:
             return
         records = parts[0] if len(parts) == 1 else np.concatenate(parts)
         scale = 1.0 / (1 << level)
-        order, _ = cell_order(records, scale, CELL_PX, (image.shape[1] - 2 * MARGIN, image.shape[2] - 2 * MARGIN))
+        order, _ = cell_order(records, scale, (image.shape[1] - 2 * MARGIN, image.shape[2] - 2 * MARGIN))
         draw(image, records, order, scale, self.stamps, finest=level == 0, wide=level == self.plan.top)
 
     def _draw_shared(
@@ -97,7 +97,7 @@ class Cycle:
         """The same with all workers on one image: bands of even number, then those of odd, whoever draws them."""
         scale = 1.0 / (1 << level)
         size = image.shape[1] - 2 * MARGIN, image.shape[2] - 2 * MARGIN
-        sorted_parts = list(runner.map(lambda records: cell_order(records, scale, CELL_PX, size), parts))
+        sorted_parts = list(runner.map(lambda records: cell_order(records, scale, size), parts))
         if not parts:
             return
 

@@ -137,6 +137,16 @@ def test_a_species_nobody_sees_is_a_sheet_of_nothing(tmp_path):
     assert verify(atlas.path) == []
 
 
+@pytest.mark.parametrize("pixels", [1536, 2560])
+def test_an_image_whose_side_is_no_power_of_two_times_a_tile_has_sound_levels(tmp_path, pixels):
+    atlas = built(tmp_path, changed(description(), view__pixels=pixels, view__slabs=1))
+    assert verify(atlas.path) == []
+    root = zarr.open(atlas.path / "z1.00" / "gas", mode="r")
+    sides = [root[str(level)].shape[1] for level in range(atlas.info["levels"])]
+    assert sides == [pixels >> level for level in range(len(sides))]
+    assert 256 < sides[-1] <= 512
+
+
 def test_huge_and_tiny_numbers_survive(tmp_path):
     # X-ray luminosities in erg/s are beyond what single precision holds.
     arrays = particles()

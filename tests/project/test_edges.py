@@ -99,6 +99,20 @@ def test_a_view_smaller_or_larger_than_the_box_or_across_its_edge_shows_every_im
     assert np.abs(image - expected).sum() <= 2e-3 * expected.sum() + 2e-3
 
 
+@pytest.mark.parametrize("size", [(512, 1536), (1024, 512), (2560, 512)])
+def test_an_image_that_is_no_square_and_no_power_of_two_is_that_of_the_plain_sum(size):
+    rng = np.random.default_rng(10)
+    position = rng.random((300, 3)) * [size[1], size[0], 8.0]
+    radius = 10 ** rng.uniform(-1, 2.5, 300)
+    period = np.array([size[1], size[0], 8.0])
+    image = draw(camera(size, slabs=[0.0, 8.0], period=tuple(period)), position, radius)[0, 0]
+    given = {"u_low": 0.0, "v_high": float(size[0]), "pixel": 1.0, "size": size, "edges": np.array([0.0, 8.0])}
+    expected = project(position, radius, np.ones((300, 1)), period=period, **given)[0, 0]
+    assert image.sum(dtype=np.float64) == pytest.approx(300, rel=1e-6)
+    # Few particles, far from each other: the bound of single ones.
+    assert np.abs(image - expected).sum() <= 2e-3 * 300
+
+
 @pytest.mark.parametrize("shift", [-1, 1, 7])
 def test_positions_outside_the_periodic_box_are_those_inside(shift):
     rng = np.random.default_rng(9)

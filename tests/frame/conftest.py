@@ -124,7 +124,6 @@ def open_screen(contexts, browser, live):
     """Opens a page: ``open_screen(fragment, width=..., height=..., ratio=..., touch=..., motion=..., atlas=..., address=...,
     fresh=..., settle=...)``; `fresh` is a browser that has seen nothing yet.
     """
-    live.calm()
     closing = []
 
     def new(
@@ -148,3 +147,4 @@ def open_screen(contexts, browser, live):
     yield new
     for each in closing:
         each.close()
+    live.calm()

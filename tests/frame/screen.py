@@ -16,6 +16,17 @@ from playwright.sync_api import Page
 
 PICTURES = Path(__file__).parents[1] / "pictures"
 STEPS = 1024  # entries of a ramp
+# Three frames in a row in which the map says that it is at rest; the first frames after a press have yet to show it.
+AT_REST = """timeout => new Promise((done) => {
+  const end = performance.now() + timeout;
+  let still = 0;
+  const look = () => {
+    still = document.querySelector('#hand').getAttribute('aria-busy') === 'false' ? still + 1 : 0;
+    if (still === 3 || performance.now() > end) done(still === 3);
+    else requestAnimationFrame(look);
+  };
+  requestAnimationFrame(() => requestAnimationFrame(look));
+})"""
 
 
 class Screen:
@@ -40,13 +51,8 @@ class Screen:
 
     def settle(self, timeout: float = 10.0) -> None:
         """Wait until nothing moves and nothing is awaited, and the link has followed."""
-        end = time.monotonic() + timeout
-        still = 0
-        self.page.wait_for_timeout(50)
-        while still < 2:
-            assert time.monotonic() < end, f"the map does not come to rest; {self.errors or self.status()}"
-            still = still + 1 if self.page.get_attribute("#hand", "aria-busy") == "false" else 0
-            self.page.wait_for_timeout(30)
+        rests = self.page.evaluate(AT_REST, 1000 * timeout)
+        assert rests, f"the map does not come to rest; {self.errors or self.status()}"
 
     def map_box(self) -> dict[str, float]:
         box = self.page.locator("#hand").bounding_box()

@@ -8,8 +8,7 @@ import pytest
 START = "#u=50&v=37&width=40"
 
 
-@pytest.mark.parametrize("motion", [True, False])
-@pytest.mark.parametrize("notches", [-3, 3])
+@pytest.mark.parametrize("notches, motion", [(-3, True), (3, False)])
 def test_the_wheel_zooms_about_the_pointer(open_screen, notches, motion):
     screen = open_screen(START, motion=motion)
     box = screen.map_box()

@@ -9,7 +9,7 @@ from drawing import KERNELS, camera, draw
 from tilemap.pyramid.reduce import halve
 
 SIZE = 512
-# Classes meet at the radii where the engine changes its way of drawing (0.49, 4, 7.4, 11.4, 15.4, 15.8, twice that ...),
+# Classes meet at the radii where the engine changes its way of drawing (0.49, 4, 7.4, 11.4, 15.4, 15.8, twice this ...),
 # and end with kernels twice as wide as the view.
 CLASSES = [
     (1e-6, 1e-3), (0.001, 0.05), (0.05, 0.48), (0.48, 0.5), (0.5, 1), (1, 2), (2, 3.9), (3.9, 4.1), (4.1, 7.3), (7.3, 7.5),

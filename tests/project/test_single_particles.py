@@ -11,7 +11,7 @@ from reference import project
 
 from tilemap.project.stamps import LARGE_PX
 
-# From kernels far below a pixel to some wider than half the view; 4 and 15.4 are where the engine changes its way of drawing.
+# From kernels far below a pixel to some wider than half the view; 0.49, 4 and 15.8 are where the engine changes its ways.
 RADII = (1e-5, 0.01, 0.1, 0.3, 0.6, 1, 1.6, 2.5, 3.99, 4, 5.5, 7.7, 11, 15.3, 15.5, 22, 31, 62, 124, 400)
 SIZE = 1024
 PLACES = 100

@@ -7,6 +7,7 @@ import hashlib
 import json
 import os
 import subprocess
+import sys
 from pathlib import Path
 
 import numpy as np
@@ -327,7 +328,11 @@ def test_enough_memory_is_enough(tmp_path):
 
 
 def test_a_scratch_folder_left_by_a_build_that_was_killed_is_no_hindrance(tmp_path):
-    (tmp_path / "small.atlas.part" / "z1.00").mkdir(parents=True)
+    killed = "import sys; from tilemap.build_atlas import build_atlas; import os\n"
+    killed += "build_atlas(sys.argv[1], sys.argv[2], progress=lambda *what: os.kill(os.getpid(), 9))"
+    write_build(tmp_path)
+    done = subprocess.run([sys.executable, "-c", killed, tmp_path / "small.yaml", tmp_path / "small.atlas"])
+    assert done.returncode == -9 and left(tmp_path) == {"small.atlas.part"}
     assert verify(built(tmp_path).path) == []
     assert left(tmp_path) == {"small.atlas"}
 
@@ -383,3 +388,12 @@ def test_the_description_is_plain_json(atlas):
     text = (atlas.path / "atlas.json").read_text()
     assert "NaN" not in text and "Infinity" not in text
     assert json.loads(text)["format"] == "tilemap-atlas"
+
+
+def test_a_folder_that_no_build_left_is_not_taken_for_scratch(tmp_path):
+    folder = tmp_path / "small.atlas.part"
+    folder.mkdir()
+    (folder / "thesis.txt").write_text("years of work")
+    with pytest.raises(InputError, match="in the way"):
+        built(tmp_path)
+    assert (folder / "thesis.txt").read_text() == "years of work"

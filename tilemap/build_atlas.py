@@ -33,6 +33,8 @@ from tilemap.runners.local import LocalRunner
 from tilemap.sources import Facts, Source, open_source
 
 FORMAT_VERSION = 1
+UNFINISHED = "unfinished.part"
+"""Marks the scratch folder of a build; publishing removes it with whatever else ends like this."""
 _REPORTED = ("tilemap", "numpy", "numba", "scipy", "h5py", "astropy", "isal", "duckdb")
 
 
@@ -114,10 +116,15 @@ def build_atlas(
 
 @contextmanager
 def _scratch(target: Path) -> Iterator[Path]:
-    """A folder beside the target, gone again unless it was published."""
+    """A folder beside the target, gone again unless it was published; one that a stopped build left is taken over."""
     folder = target.with_name(f"{target.name}.part")
-    shutil.rmtree(folder, ignore_errors=True)
+    mark = folder / UNFINISHED
+    if folder.exists():
+        if not mark.exists():
+            raise InputError(f"{folder} is in the way and not left by a build: move it, or name another atlas")
+        shutil.rmtree(folder)
     folder.mkdir()
+    mark.touch()
     try:
         yield folder
     finally:

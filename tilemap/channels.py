@@ -121,6 +121,17 @@ class SpeciesPlan:
         below = 1.0 if sheet.weight is None else self.scales[sheet.weight]
         return float(self.scales[sheet.plane] / below)
 
+    def values(self, sheet: SheetPlan, planes: NDArray[np.float32]) -> NDArray[np.float32]:
+        """What is coded of a sheet: its `values`, means held to the range of what they average.
+
+        They cannot leave it but by rounding: two planes divided are good to 1e-6, and a range may be narrower.
+        """
+        values = sheet.values(planes)
+        if sheet.weight is None:
+            return values
+        low, high = (self.ranges[sheet.plane] / self.scale(sheet)).astype(np.float32)
+        return np.clip(values, low, high, out=values)
+
     def _amount(self, chunk: Chunk, plane: int) -> tuple[NDArray[np.float64], NDArray[np.float64] | None]:
         """What each particle adds to a plane, unscaled; and the values whose range matters."""
         extensive, averaged = self.quantities[plane]

@@ -186,7 +186,7 @@ class SpeciesDrawing:
                 if image is None:
                     writer.put_nothing(level, slab, corner, (rows, columns))
                 else:
-                    writer.put(level, slab, corner, sheet.values(image))
+                    writer.put(level, slab, corner, self.planes.values(sheet, image))
             rows, columns = rows // 2, columns // 2
             image = None if image is None else halve(image)
         if image is not None:
@@ -199,14 +199,14 @@ class SpeciesDrawing:
         slab = stack if stack < plan.slabs else WHOLE
         for level in range(plan.local, plan.levels):
             for sheet, writer in zip(self.planes.sheets, writers, strict=True):
-                writer.put(level, slab, (0, 0), sheet.values(image))
+                writer.put(level, slab, (0, 0), self.planes.values(sheet, image))
             if level + 1 < plan.levels:
                 image = halve(image)
 
     def _summary(self, sheet: SheetPlan, image: NDArray[np.float32]) -> dict[str, Any]:
         while max(image.shape[1:]) > SUMMARY_PX:
             image = halve(image)
-        values = sheet.values(image).astype(np.float64) * (sheet.factor * self.planes.scale(sheet))
+        values = self.planes.values(sheet, image).astype(np.float64) * (sheet.factor * self.planes.scale(sheet))
         values = values[np.isfinite(values) & (values != 0)]
         if not len(values):
             return {"percentiles": {}, "range": None}

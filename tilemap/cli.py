@@ -49,13 +49,21 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except (KeyboardInterrupt, click.Abort):
         return _fail(INTERRUPTED, "interrupted")
     except BrokenPipeError:
-        # Whoever read the output has gone; nothing may be written any more, not even at exit.
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        _drop_output()  # whoever read it has gone
         return NOT_SO
     except MemoryError:
         return _fail(WRONG_INPUT, "out of memory: give --memory less than the machine has free, or --workers fewer")
     except OSError as failure:
+        try:
+            sys.stdout.flush()
+        except OSError:
+            _drop_output()  # the disk under it is full
         return _fail(WRONG_INPUT, _reason(failure))
+
+
+def _drop_output() -> None:
+    """Let nothing that is still to be printed be written any more, not even at exit."""
+    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
 
 
 def _fail(code: int, message: str) -> int:

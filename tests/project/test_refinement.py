@@ -4,11 +4,9 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from drawing import KERNELS
 from scipy.integrate import quad
 from scipy.interpolate import BSpline
 
-from tilemap.project.stamps import stamps_for
 from tilemap.project.vcycle import TWO_SCALE, TWO_SCALE_AVERAGED, _refine
 
 QUARTIC = BSpline.basis_element(np.arange(6) - 2.5, extrapolate=False)
@@ -67,15 +65,6 @@ def test_both_axes_are_refined_alike(weights):
     _refine(coarse, fine, 2, 2, 8, 8, weights)
     expected = np.outer(children(weights, np.pad(row, 1)), children(weights, np.pad(column, 1)))
     assert fine[0] == pytest.approx(1 + expected, abs=1e-6)
-
-
-@pytest.mark.parametrize("kernel", KERNELS)
-def test_the_table_of_shares_ends_at_one_and_never_falls(kernel):
-    table = stamps_for(kernel).cumulative
-    assert table[-1, -1] == 1
-    assert not table[0].any()
-    # Single precision: 6e-8 of the whole.
-    assert min(np.diff(table, axis=0).min(), np.diff(table, axis=1).min()) >= -6e-8
 
 
 def test_images_finer_than_a_coarse_one_are_positive_where_it_is():

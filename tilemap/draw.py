@@ -29,7 +29,7 @@ from tilemap.sources import Chunk, Source
 
 CHUNK = 1 << 19
 PERCENTILES = (1, 5, 25, 50, 75, 95, 99, 99.9)
-SUMMARY_PX = 2048
+SUMMARY_PX = 1024
 """Percentiles are those of the whole at the finest level that has no longer side."""
 
 

@@ -56,6 +56,10 @@ def _refine(coarse, fine, corner_row, corner_column, rows, columns, weights):
                 out[2 * j + 1] += right[j]
 
 
+STRIP_ROWS = 128
+"""Rows of a coarse image that are refined in one piece of work."""
+
+
 class Cycle:
     """One species' way from buckets to images.
 
@@ -74,14 +78,24 @@ class Cycle:
     def _empty(self, size: tuple[int, int]) -> NDArray[np.float32]:
         return np.zeros((self.channels, size[0] + 2 * MARGIN, size[1] + 2 * MARGIN), dtype=np.float32)
 
-    def _refine_into(self, coarse: NDArray[np.float32], fine: NDArray[np.float32], level: int) -> None:
+    def _refine_into(
+        self, coarse: NDArray[np.float32], fine: NDArray[np.float32], level: int, runner: LocalRunner | None = None
+    ) -> None:
         """Carry a coarse image to the next finer `level`, with its pad where that is coarse too; both with margins."""
         pad = PAD if level else 0
         reach = pad // 2
         rows, columns = coarse.shape[1] - 2 * MARGIN + 2 * reach, coarse.shape[2] - 2 * MARGIN + 2 * reach
         inside = fine[:, MARGIN - pad : MARGIN - pad + 2 * rows, MARGIN - pad : MARGIN - pad + 2 * columns]
         corner = MARGIN - reach
-        _refine(coarse, inside, corner, corner, rows, columns, TWO_SCALE if level else TWO_SCALE_AVERAGED)
+        weights = TWO_SCALE if level else TWO_SCALE_AVERAGED
+
+        def strip(start: int) -> None:
+            stop = min(start + STRIP_ROWS, rows)
+            _refine(coarse, inside[:, 2 * start : 2 * stop], corner + start, corner, stop - start, columns, weights)
+
+        starts = range(0, rows, STRIP_ROWS)
+        for _ in runner.map(strip, starts) if runner else map(strip, starts):
+            pass
 
     def _draw_into(self, image: NDArray[np.float32], parts: list[NDArray[np.float32]], level: int) -> None:
         if not parts:
@@ -126,7 +140,7 @@ class Cycle:
         for level in range(self.plan.top, self.plan.local - 1, -1):
             finer = self._empty(self.plan.size(level))
             if image is not None:
-                self._refine_into(image, finer, level)
+                self._refine_into(image, finer, level, runner)
             self._draw_shared(finer, buckets.take(-1, slab, level), level, runner)
             image = finer
         assert image is not None

@@ -8,7 +8,7 @@ from __future__ import annotations
 import os
 from collections import deque
 from collections.abc import Callable, Iterable, Iterator
-from concurrent.futures import Future, ThreadPoolExecutor
+from concurrent.futures import Future, ThreadPoolExecutor, wait
 from types import TracebackType
 from typing import TypeVar
 
@@ -22,7 +22,10 @@ def usable_cores() -> int:
 
 
 class LocalRunner:
-    """Runs work on `workers` threads (default: one a core). Use as a context; leaving it waits for what is running."""
+    """Runs work on `workers` threads (default: one a core). Use as a context; leaving it waits for what is running.
+
+    One worker is the calling thread itself, so that it takes one core and no more.
+    """
 
     def __init__(self, workers: int | None = None) -> None:
         self.workers = workers or usable_cores()
@@ -38,13 +41,19 @@ class LocalRunner:
 
     def begin(self, work: Callable[[], Result]) -> Future[Result]:
         """Start one piece of work beside everything else; its `result()` waits for it."""
-        return self._pool.submit(work)
+        future = self._pool.submit(work)
+        if self.workers == 1:
+            wait([future])
+        return future
 
     def map(self, work: Callable[[Piece], Result], pieces: Iterable[Piece]) -> Iterator[Result]:
         """`work` on every piece; results in order. At most one piece more than there are workers is in memory at once.
 
         The first error stops taking pieces, and is raised here.
         """
+        if self.workers == 1:
+            yield from map(work, pieces)
+            return
         waiting: deque[Future[Result]] = deque()
         try:
             for piece in pieces:

@@ -27,7 +27,7 @@ from tilemap.pyramid.writer import WHOLE, SheetWriter
 from tilemap.runners.local import LocalRunner
 from tilemap.sources import Chunk, Source
 
-CHUNK = 1 << 19
+CHUNK = 1 << 20
 PERCENTILES = (1, 5, 25, 50, 75, 95, 99, 99.9)
 SUMMARY_PX = 1024
 """Percentiles are those of the whole at the finest level that has no longer side."""

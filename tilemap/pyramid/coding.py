@@ -6,6 +6,7 @@ Code 0 is "nothing here". Codes 1 to 65535 stand at equal steps, in log10 of the
 from __future__ import annotations
 
 import math
+from abc import ABC, abstractmethod
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from functools import lru_cache
@@ -105,7 +106,7 @@ def _look_up(codes, table, values):
         values[i] = table[codes[i]]
 
 
-class Coding:
+class Coding(ABC):
     """What the codings share. A coding is a frozen value; `CODINGS` holds the classes by name."""
 
     name: ClassVar[str]
@@ -178,12 +179,13 @@ class Coding:
             return LogCoding(low, step, nothing=math.nan if attributes.get("kind") == "mean" else 0.0)
         return LinearCoding(low, step)
 
+    @abstractmethod
     def _encode_into(self, values: NDArray[Any], codes: NDArray[np.uint16]) -> None:
-        raise NotImplementedError
+        """Write the codes of one line of values."""
 
+    @abstractmethod
     def _exact(self, steps: NDArray[np.float64]) -> NDArray[np.float64]:
         """Values that lie so many steps above the lowest."""
-        raise NotImplementedError
 
 
 @dataclass(frozen=True, eq=False)

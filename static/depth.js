@@ -15,22 +15,24 @@ export class DepthEdge {
     this.field = make('div.field');
     this.plot = svg('svg', { 'aria-hidden': 'true' });
     this.field.append(this.plot);
-    const part = (name, /** @type {(to: number) => void} */ move, /** @type {(steps: number) => void} */ nudge) => {
-      const grip = handle(this.field, { name: say(name), along: 'horizontal', drag: (x) => move(this.edgeAt(x)), nudge, reset: () => this.whole() });
+    const part = (name, /** @type {(x: number) => void} */ drag, /** @type {(steps: number) => void} */ nudge, /** @type {(x: number) => void} */ begin) => {
+      const grip = handle(this.field, { name: say(name), along: 'horizontal', drag, nudge, begin, reset: () => this.whole() });
       this.field.append(grip.root);
       return grip;
     };
-    this.slider = part('depth_slide', (to) => this.slide(to - this.state.slabs[0]), (n) => this.slide(n));
+    /** @type {{slab: number, shift: number}|null} a drag over the whole depth: where it began, and the hand's place less the drag's */
+    this.sweep = null;
+    this.slider = part('depth_slide', (x) => this.drag(x), (n) => this.slide(n), (x) => this.press(x));
     this.slider.root.classList.add('slide');
-    this.near = part('depth_near', (to) => this.open(to, null), (n) => this.open(this.state.slabs[0] + n, null));
-    this.far = part('depth_far', (to) => this.open(null, to), (n) => this.open(null, this.state.slabs[1] + n));
+    this.near = part('depth_near', (x) => this.open(this.edgeAt(x), null), (n) => this.open(this.state.slabs[0] + n, null));
+    this.far = part('depth_far', (x) => this.open(null, this.edgeAt(x)), (n) => this.open(null, this.state.slabs[1] + n));
     this.text = make('div.text', { role: 'status' });
     this.all = make('button.word.act', { type: 'button', title: say('depth_whole_title'), click: () => this.whole() }, say('depth_whole'));
     corner.append(this.text, this.all);
     root.append(this.field);
     this.field.addEventListener('pointerdown', (event) => {
       if (event.target !== this.field && event.target !== this.plot && !this.plot.contains(/** @type {Node} */ (event.target))) return;
-      this.slide(this.slabAt(event.clientX - this.field.getBoundingClientRect().left) - this.state.slabs[0], true);
+      this.slide(this.slabAt(event.clientX - this.field.getBoundingClientRect().left) - this.state.slabs[0]);
     });
     this.field.addEventListener('wheel', (event) => {
       event.preventDefault();
@@ -39,11 +41,29 @@ export class DepthEdge {
     new ResizeObserver(() => this.draw()).observe(this.field);
   }
 
-  /** @param {number} by slabs @param {boolean} [single] from the whole depth, take the one slab that was touched */
-  slide(by, single = false) {
+  /**
+   * A window over the whole depth has nowhere to slide to: a hand on it takes the slab that it touches, and the slabs that
+   * it is drawn over.
+   * @param {number} x CSS pixels
+   */
+  press(x) {
+    this.sweep = this.state.wholeDepth ? { slab: this.slabAt(x), shift: x - this.x(this.edges[0]) } : null;
+    if (this.sweep) this.set([this.sweep.slab, this.sweep.slab + 1]);
+  }
+
+  /** @param {number} x CSS pixels, of the near end of the window as it was when the drag began */
+  drag(x) {
+    if (!this.sweep) return this.slide(this.edgeAt(x) - this.state.slabs[0]);
+    const { slab, shift } = this.sweep;
+    const here = this.slabAt(x + shift);
+    this.set([Math.min(slab, here), Math.max(slab, here) + 1]);
+  }
+
+  /** @param {number} by slabs; from the whole depth, to the slab at one end */
+  slide(by) {
     const { atlas, slabs, wholeDepth } = this.state;
-    if (wholeDepth && !single) return by === 0 ? undefined : this.set(by > 0 ? [0, 1] : [atlas.slabs - 1, atlas.slabs]);
-    const size = wholeDepth ? 1 : slabs[1] - slabs[0];
+    if (wholeDepth) return by === 0 ? undefined : this.set(by > 0 ? [0, 1] : [atlas.slabs - 1, atlas.slabs]);
+    const size = slabs[1] - slabs[0];
     const first = Math.min(Math.max(slabs[0] + by, 0), atlas.slabs - size);
     this.set([first, first + size]);
   }

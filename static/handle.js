@@ -8,7 +8,7 @@ import { dress, make } from './dom.js';
  * @property {'horizontal'|'vertical'} along
  * @property {(steps: number) => void} nudge by steps; Infinity for the end
  * @property {(x: number, y: number) => void} drag to a place, CSS pixels in the track
- * @property {() => void} [begin] at the start of a drag
+ * @property {(x: number, y: number) => void} [begin] at the start of a drag, at a place in the track
  * @property {() => void} [reset] on a double click
  * @property {() => void} [type] on Enter, where a number can be typed
  */
@@ -33,7 +33,7 @@ export function handle(track, grip) {
     const box = track.getBoundingClientRect();
     offset = [event.clientX - box.left - at[0], event.clientY - box.top - at[1]];
     root.classList.add('held');
-    grip.begin?.();
+    grip.begin?.(event.clientX - box.left, event.clientY - box.top);
     event.stopPropagation();
   });
   root.addEventListener('pointermove', (event) => {

@@ -81,10 +81,12 @@ const TABLES = {
       ['{ }', 'close, open the depth window'],
       ['\\', 'whole depth'],
       ['n p', 'next, previous object, heaviest first'],
+      ['g', 'go to the chosen object'],
       ['m', 'markers on or off'],
       ['u', 'comoving, proper, angle'],
       ['c', 'copy the reading'],
       ['k', 'copy the link'],
+      ['?', 'this list'],
       ['esc', 'put away'],
     ],
 

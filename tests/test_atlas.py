@@ -12,7 +12,7 @@ from tilemap.atlas import Atlas
 from tilemap.errors import InputError
 from tilemap.pyramid.coding import LinearCoding
 
-# Half a step of 0.002 dex (design.md, 6).
+# Half a step of 0.002 dex.
 ROUNDING = 0.0024
 COLUMNS, ROWS, SLABS = 1536, 512, 3
 PIXEL = 100.0 / COLUMNS

@@ -68,6 +68,24 @@ def test_a_click_on_a_slab_looks_at_that_slab_alone(screen):
     assert (round(low, 3), round(high, 3)) == (66.667, 100)
 
 
+def test_a_click_on_the_whole_depth_takes_the_slab_under_the_hand(screen):
+    screen.go("#u=50&v=37&width=60")
+    box = screen.page.locator("#depth .field").bounding_box()
+    screen.page.mouse.click(box["x"] + 0.5 * box["width"], box["y"] + 0.7 * box["height"])
+    screen.settle()
+    low, high = map(float, screen.link()["depth"].split(":"))
+    assert (round(low, 3), round(high, 3)) == (33.333, 66.667)
+
+
+def test_a_drag_over_the_whole_depth_takes_the_slabs_it_covers(screen):
+    screen.go("#u=50&v=37&width=60")
+    box = screen.page.locator("#depth .field").bounding_box()
+    y = box["y"] + 0.7 * box["height"]
+    drag(screen, (box["x"] + 0.8 * box["width"], y), (box["x"] + 0.5 * box["width"], y))
+    low, high = map(float, screen.link()["depth"].split(":"))
+    assert (round(low, 3), round(high, 3)) == (33.333, 100)
+
+
 def test_the_depth_window_opens_by_its_handle(screen):
     screen.go("#u=50&v=37&width=60&depth=0:33.3333")
     x, y = handle(screen, "Far end of the depth window")

@@ -83,6 +83,20 @@ def test_every_module_is_fetched_at_once():
     assert named == {file.name for file in STATIC.glob("*.js")} - {"app.js", "tile-worker.js"}
 
 
+def test_every_style_sheet_is_used():
+    used = re.findall(r'stylesheet" href="frame/(.*?)"', (STATIC / "index.html").read_text())
+    assert sorted(used) == sorted(file.name for file in STATIC.glob("*.css"))
+
+
+def test_the_list_of_keys_names_every_key():
+    answered = set(re.findall(r"^    (?:'(.+)'|(\w+)): \(", (STATIC / "keys.js").read_text(), re.M))
+    listed = re.findall(r"^      \['(.+?)', '", (STATIC / "words.js").read_text(), re.M)
+    words = {"arrows": ["ArrowLeft", "ArrowRight", "ArrowUp", "ArrowDown"], "shift a": ["A"], "esc": ["Escape"]}
+    named = {key for entry in listed for key in words.get(entry, entry.replace("−", "-").split())}
+    # = and _ lie on the keys of + and -, with or without shift.
+    assert {a or b for a, b in answered} - {"=", "_"} == named - {"1", "…", "9"}
+
+
 def test_the_frame_needs_no_script_but_its_own():
     page = (STATIC / "index.html").read_text()
     assert not re.search(r"<script(?![^>]*src=)|\son\w+=|style=|https?://", page)

@@ -1,4 +1,4 @@
-"""Codings, against numpy's logarithm and the plain formula of design.md, 6."""
+"""Codings, against numpy's logarithm and the plain formula of the coding (tilemap/pyramid/coding.py)."""
 
 import math
 

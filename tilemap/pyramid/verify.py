@@ -29,7 +29,7 @@ from tilemap.quantities import unit_named
 __all__ = ["Finding", "TilePlace", "pixel_area", "verify"]
 
 TOTAL_TOLERANCE = 1e-6
-"""Relative: how far the engine may be off in the mass it puts on an image (design.md, 5)."""
+"""Relative: how far the engine may be off in the mass it puts on an image (README.md, What the numbers mean)."""
 
 
 def verify(path: str | os.PathLike[str], progress: Report | None = None) -> list[Finding]:

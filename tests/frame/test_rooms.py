@@ -53,6 +53,23 @@ def test_the_frame_fits_the_screen(open_screen, name, width, height, ratio, touc
     assert box["width"] * box["height"] > 0.6 * width * height
 
 
+def test_a_long_title_keeps_clear_of_the_sheets(open_screen):
+    screen = open_screen("", width=1440, height=900)
+    screen.page.wait_for_selector("#census .bar")
+    before = screen.page.locator("#census").bounding_box()["height"]
+    screen.page.evaluate("document.querySelector('h1 a').textContent = 'A small hydrodynamic volume of some length'")
+    ends = screen.page.evaluate("document.querySelector('#title .dim').getBoundingClientRect().bottom")
+    begins = screen.page.evaluate("document.querySelector('#sheets .word').getBoundingClientRect().top")
+    assert ends <= begins
+    assert screen.page.locator("#census").bounding_box()["height"] < before + 60
+
+
+@pytest.mark.parametrize("width", [320, 390])
+def test_no_line_of_words_is_cut_off_on_a_phone(open_screen, width):
+    screen = open_screen("#u=50.123&v=37.456&width=0.5", width=width, height=568, ratio=2, touch=True)
+    assert screen.page.evaluate("document.querySelector('#reading').scrollWidth") <= width
+
+
 @pytest.mark.parametrize("edge", ["tone", "scale", "depth", "census"])
 def test_on_a_phone_an_edge_opens_under_the_thumb_and_closes_on_the_map(open_screen, edge):
     screen = open_screen("", width=390, height=844, ratio=2, touch=True)

@@ -12,9 +12,10 @@ import pytest
 from atlas_maker import make_atlas
 
 from tilemap import __version__
-from tilemap.cli import byte_count, main
+from tilemap.cli import main
 from tilemap.errors import InputError, NotSoError
 from tilemap.progress import shown
+from tilemap.sizes import byte_count
 
 RUN32 = Path(__file__).parent / "data" / "run32"
 

@@ -30,6 +30,7 @@ from tilemap.pyramid.grid import TILE, level_shapes
 from tilemap.pyramid.publish import FORMAT, check_target, file_sha256, publish
 from tilemap.pyramid.store import create_group
 from tilemap.runners.local import LocalRunner
+from tilemap.sizes import byte_count
 from tilemap.sources import Facts, Source, open_source
 
 FORMAT_VERSION = 1
@@ -199,15 +200,6 @@ def _where(build: BuildFile, camera: Camera, facts: Facts) -> str:
     if facts.box is not None:
         text += f", the box is {' x '.join(f'{side:.6g}' for side in facts.box)} {unit}"
     return text
-
-
-def byte_count(memory: int | str) -> int:
-    """Bytes from a number or a text such as "4GiB"; InputError where it is neither."""
-    if isinstance(memory, int):
-        return memory
-    from tilemap.cli import byte_count as parse
-
-    return parse(memory)
 
 
 def _check_memory(source: Source, plan: Plan, species: list[Any], limit: int) -> None:

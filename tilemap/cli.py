@@ -9,7 +9,6 @@ from __future__ import annotations
 import errno
 import json
 import os
-import re
 import sys
 from collections.abc import Sequence
 from pathlib import Path
@@ -19,15 +18,11 @@ import click
 from tilemap import __version__
 from tilemap.errors import InputError, NotSoError
 from tilemap.progress import shown
+from tilemap.sizes import byte_count
 
 DONE, NOT_SO, WRONG_INPUT, INTERRUPTED = 0, 1, 2, 130
 PORT = 8750
 HOST = "127.0.0.1"
-BYTES = {"": 1, "B": 1} | {
-    prefix + suffix: factor**power
-    for power, prefix in enumerate("KMGT", start=1)
-    for suffix, factor in (("B", 1000), ("iB", 1024))
-}
 PATH = click.Path(path_type=Path)
 
 
@@ -195,24 +190,6 @@ def _is_built(atlas: Path, build_file: Path) -> bool:
     except (OSError, ValueError, KeyError):
         return False
     return same_text and newest <= published
-
-
-def byte_count(text: str) -> int:
-    """Bytes in a size such as 4GiB, 500 MB or 1.5e9.
-
-    Raises
-    ------
-    InputError
-        If it is not a positive size.
-    """
-    found = re.fullmatch(r"\s*([0-9.]+(?:[eE][0-9]+)?)\s*([A-Za-z]*)\s*", text)
-    try:
-        count = int(float(found[1]) * BYTES[found[2]]) if found else 0
-    except (KeyError, ValueError):
-        count = 0
-    if count < 1:
-        raise InputError(f"--memory {text}: expected a size such as 4GiB or 500MB")
-    return count
 
 
 def _say_now(line: str) -> None:

@@ -258,3 +258,10 @@ def test_a_finding_reads_as_one_line_with_file_tile_and_fault(atlas):
     lines = [str(finding) for finding in verify(atlas)]
     expected = f"{EPOCH}/gas/1/c/0/0/0: sheet gas, level 1, slab 0, tile row 0, column 0: "
     assert any(line.startswith(expected) and "average of level 0" in line for line in lines)
+
+
+@pytest.mark.parametrize("left", [b"{", b"{}", None])
+def test_an_atlas_that_no_longer_says_what_it_is_is_damaged(atlas, left):
+    described = atlas / "atlas.json"
+    described.unlink() if left is None else described.write_bytes(left)
+    assert "atlas.json" in {finding.path for finding in verify(atlas)}

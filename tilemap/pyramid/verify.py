@@ -23,6 +23,7 @@ from tilemap.pyramid.filecheck import check_files
 from tilemap.pyramid.findings import Finding, TilePlace
 from tilemap.pyramid.grid import level_shapes
 from tilemap.pyramid.levelcheck import Checked, Stack, checks_of
+from tilemap.pyramid.publish import CHECKSUMS
 from tilemap.pyramid.reader import ArrayReader
 from tilemap.quantities import unit_named
 
@@ -54,10 +55,18 @@ def verify(path: str | os.PathLike[str], progress: Report | None = None) -> list
     Raises
     ------
     InputError
-        Where there is no atlas.
+        Where there is no atlas, and no `checksums.json` that says that there was one.
     """
     root = Path(path)
-    described = read_description(root)
+    try:
+        described = read_description(root)
+    except InputError as error:
+        if not (root / CHECKSUMS).exists():
+            raise
+        return [
+            Finding("atlas.json", str(error)),
+            *check_files(root),
+        ]  # an atlas once, and damaged where it says what it is
     report: Report = progress or (lambda phase, done, total: None)
     wrong = [Finding("atlas.json", what) for what in faults(described)]
     report("checksums", 0, 1)

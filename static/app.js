@@ -34,6 +34,7 @@ export class Frame {
     this.status = status;
     this.hand = at('hand');
     this.frameAsked = 0;
+    /** @type {View|null} the view that tiles were asked ahead for */ this.aheadFor = null;
     this.timers = { tiles: 0, counts: 0, ahead: 0 };
     this.asked = { tiles: 0, counts: 0 };
     /** @type {Map<string, Layer>} */
@@ -47,7 +48,7 @@ export class Frame {
       gone: () => this.reopen(),
     });
     this.map = new MapSurface(/** @type {HTMLCanvasElement} */ (at('ground')), this.tiles, () => this.wake());
-    this.measureMap();
+    this.size = this.measured();
     const view = new View(0, 0, 1, this.size.w, this.size.h);
     const limits = new Limits(atlas.bounds, atlas.pixel);
     this.motion = new Motion(limits.filled(view), limits, () => this.moved());
@@ -112,8 +113,9 @@ export class Frame {
   get layer() {
     const { state, atlas } = this;
     const layer = new Layer(atlas, state.epoch, state.sheet, state.slabs);
-    if (!this.layers.has(layer.id)) this.layers.set(layer.id, layer);
-    return this.layers.get(layer.id);
+    const known = this.layers.get(layer.id) ?? layer;
+    this.layers.set(layer.id, known);
+    return known;
   }
 
   /** @param {Set<string>} changed */
@@ -208,15 +210,15 @@ export class Frame {
     }, every);
   }
 
-  measureMap() {
+  measured() {
     const box = at('map').getBoundingClientRect();
     const ratio = devicePixelRatio;
     const [dw, dh] = [Math.max(Math.round(box.width * ratio), 16), Math.max(Math.round(box.height * ratio), 16)];
-    this.size = { w: dw / ratio, h: dh / ratio, dw, dh, ratio };
+    return { w: dw / ratio, h: dh / ratio, dw, dh, ratio };
   }
 
   resized() {
-    this.measureMap();
+    this.size = this.measured();
     const { w, h, dw, dh, ratio } = this.size;
     this.map.resize(dw, dh, ratio);
     this.markers.resize(dw, dh, ratio);

@@ -88,7 +88,7 @@ export class Atlas {
   range(level, { u0, u1, v0, v1 }) {
     const side = this.pixelAt(level) * this.tile;
     const [across, down] = this.grid(level);
-    const clip = (x, top) => Math.min(Math.max(x, 0), top);
+    const clip = (/** @type {number} */ x, /** @type {number} */ top) => Math.min(Math.max(x, 0), top);
     return {
       c0: clip(Math.floor((u0 - this.view.u[0]) / side), across),
       c1: clip(Math.ceil((u1 - this.view.u[0]) / side), across),
@@ -115,7 +115,7 @@ export class Atlas {
 
   /** The slabs that a depth interval touches most nearly. @param {number} a @param {number} b @returns {Slabs} */
   slabsOf(a, b) {
-    const nearest = (d) => this.edges.reduce((best, e, i) => (Math.abs(e - d) < Math.abs(this.edges[best] - d) ? i : best), 0);
+    const nearest = (/** @type {number} */ d) => this.edges.reduce((best, e, i) => (Math.abs(e - d) < Math.abs(this.edges[best] - d) ? i : best), 0);
     const first = Math.min(nearest(a), this.slabs - 1);
     return [first, Math.max(nearest(b), first + 1)];
   }
@@ -146,7 +146,7 @@ export class Layer {
   /** @param {number} level @param {number} row @param {number} column @returns {Recipe} */
   recipe(level, row, column) {
     const { atlas, epoch, sheet, weight } = this;
-    const address = (name, slab) =>
+    const address = (/** @type {string} */ name, /** @type {string|number} */ slab) =>
       `tiles/${[atlas.id, epoch.name, name, level, slab, row, column].map(encodeURIComponent).join('/')}`;
     const weighted = sheet.kind === 'mean' && this.names.length > 1 && weight;
     return {

@@ -9,11 +9,16 @@ import { say } from './words.js';
 
 /** @typedef {{column: string, unit: string, edges: number[], in_view: number[], whole: number[], log: boolean}} Counts */
 
+/** Before the first answer, and without a catalogue. @type {Counts} */
+const NONE = { column: '', unit: '', edges: [], in_view: [], whole: [], log: false };
+
 export class CensusEdge {
   /** @param {HTMLElement} root @param {HTMLElement} corner @param {import('./state.js').State} state */
   constructor(root, corner, state) {
     this.state = state;
-    /** @type {Counts|null} */ this.counts = null;
+    this.counts = NONE;
+    /** of the field, CSS pixels */ this.width = 0;
+    this.pad = 6;
     root.setAttribute('aria-label', say('census'));
     this.text = make('div.text', { role: 'status' });
     this.all = make('button.word.act', { type: 'button', title: say('census_all_title'), click: () => state.set({ brush: null }) }, say('census_all'));
@@ -36,7 +41,7 @@ export class CensusEdge {
       along: 'horizontal',
       drag: (x) => this.move(which, this.at(x)),
       nudge: (steps) => {
-        if (!this.counts) return;
+        if (!this.counted) return;
         const range = this.span[1] - this.span[0];
         const now = this.t(this.ends[which]);
         this.move(which, Number.isFinite(steps) ? this.back(now + (steps * range) / 50) : this.back(this.span[steps > 0 ? 1 : 0]));
@@ -45,6 +50,10 @@ export class CensusEdge {
     });
     this.field.append(grip.root);
     return grip;
+  }
+
+  get counted() {
+    return this.counts.edges.length > 1;
   }
 
   /** @param {number} value */
@@ -83,7 +92,7 @@ export class CensusEdge {
 
   /** @param {0|1} which @param {number} value */
   move(which, value) {
-    if (!this.counts) return;
+    if (!this.counted) return;
     const ends = [...this.ends];
     ends[which] = value;
     this.brush(ends[0], ends[1]);
@@ -101,7 +110,7 @@ export class CensusEdge {
 
   /** A drag over the bars draws the brush. @param {PointerEvent} event */
   draw_brush(event) {
-    if (!this.counts || /** @type {Element} */ (event.target).closest('.handle') || event.button !== 0) return;
+    if (!this.counted || /** @type {Element} */ (event.target).closest('.handle') || event.button !== 0) return;
     const left = this.field.getBoundingClientRect().left;
     const from = this.at(event.clientX - left);
     this.field.setPointerCapture(event.pointerId);
@@ -126,11 +135,10 @@ export class CensusEdge {
     const { counts, state } = this;
     const none = !state.epoch.catalogue;
     if (none) this.text.textContent = say('census_none');
-    for (const grip of [this.low, this.high]) dress(grip.root, { hidden: !counts });
+    for (const grip of [this.low, this.high]) dress(grip.root, { hidden: !this.counted });
     dress(this.all, { hidden: !state.brush });
-    if (!counts || !w || !h || counts.edges.length < 2) return;
+    if (!this.counted || !w || !h) return;
     this.width = w;
-    this.pad = 6;
     const tall = h > 40;
     const base = h - (tall ? 18 : 3);
     const top = 6;
@@ -138,7 +146,7 @@ export class CensusEdge {
     // Counts are drawn by their square root: one heavy cluster is as easy to see as the thousandth dwarf.
     // The bars fill the height with what is in view; the outline keeps the shape of the whole.
     const seenMost = Math.max(...counts.in_view, 6);
-    const y = (n, top_n) => base - (base - top) * Math.sqrt(n / top_n);
+    const y = (/** @type {number} */ n, /** @type {number} */ top_n) => base - (base - top) * Math.sqrt(n / top_n);
     const [lo, hi] = this.ends;
     const marks = [];
     let outline = `M${this.x(counts.edges[0])} ${base}`;
@@ -165,8 +173,8 @@ export class CensusEdge {
   numerals(h) {
     const { counts } = this;
     const [a, b] = this.span;
-    const texts = [];
-    const put = (value, text) => texts.push(svg('text', { x: this.x(value), y: h - 4, 'text-anchor': 'middle' }, text));
+    /** @type {Element[]} */ const texts = [];
+    const put = (/** @type {number} */ value, /** @type {string} */ text) => texts.push(svg('text', { x: this.x(value), y: h - 4, 'text-anchor': 'middle' }, text));
     const label = [counts.column.replaceAll('_', ' '), unit(counts.unit)].filter(Boolean).join(', ');
     const room = this.width - this.pad - 8 * label.length - 24;
     if (counts.log) for (let p = Math.ceil(a); p <= b; p++) this.x(10 ** p) < room && put(10 ** p, decade(p));

@@ -15,7 +15,10 @@ export class DepthEdge {
     this.field = make('div.field');
     this.plot = svg('svg', { 'aria-hidden': 'true' });
     this.field.append(this.plot);
-    const part = (name, /** @type {(x: number) => void} */ drag, /** @type {(steps: number) => void} */ nudge, /** @type {(x: number) => void} */ begin) => {
+    /** of the field, CSS pixels */ this.width = 0;
+    this.pad = 6;
+    /** @type {(name: string, drag: (x: number) => void, nudge: (steps: number) => void, begin?: (x: number) => void) => ReturnType<typeof handle>} */
+    const part = (name, drag, nudge, begin) => {
       const grip = handle(this.field, { name: say(name), along: 'horizontal', drag, nudge, begin, reset: () => this.whole() });
       this.field.append(grip.root);
       return grip;
@@ -121,7 +124,6 @@ export class DepthEdge {
     const { clientWidth: w, clientHeight: h } = this.field;
     if (!w || !h) return;
     this.width = w;
-    this.pad = 6;
     const { edges } = this;
     const { totals, unit } = slabTotals(atlas, epoch, sheet);
     const tall = h > 40;
@@ -150,11 +152,11 @@ export class DepthEdge {
     this.plot.replaceChildren(...marks);
     this.describe(totals, unit);
     const axis = atlas.view.axes?.[2] ?? '';
-    const reading = (depth) => `${axis} ${number(depth, 4)} ${atlas.view.unit}`.trim();
+    const reading = (/** @type {number} */ depth) => `${axis} ${number(depth, 4)} ${atlas.view.unit}`.trim();
     const limits = { min: edges[0], max: edges[edges.length - 1] };
     this.near.place(x0, tall ? 8 : 0, { now: edges[slabs[0]], ...limits, text: reading(edges[slabs[0]]) });
     this.far.place(x1, tall ? 8 : 0, { now: edges[slabs[1]], ...limits, text: reading(edges[slabs[1]]) });
-    this.slider.place(x0, 0, { now: edges[slabs[0]], ...limits, text: this.text.textContent });
+    this.slider.place(x0, 0, { now: edges[slabs[0]], ...limits, text: this.text.textContent ?? '' });
     this.slider.root.style.width = `${x1 - x0}px`;
     dress(this.all, { hidden: wholeDepth });
   }
@@ -163,7 +165,7 @@ export class DepthEdge {
   describe(totals, unit) {
     const { atlas, slabs, wholeDepth, sheet } = this.state;
     const axis = atlas.view.axes?.[2] ?? '';
-    const sum = (list) => list.reduce((a, b) => a + b, 0);
+    const sum = (/** @type {number[]} */ list) => list.reduce((a, b) => a + b, 0);
     const [inside, all] = [sum(totals.slice(...slabs)), sum(totals)];
     const where = say('depth_reading', { axis, a: number(this.edges[slabs[0]], 4), b: number(this.edges[slabs[1]], 4), unit: atlas.view.unit });
     const total = sheet.kind === 'mean' && !sheet.weight ? '' : quantity(inside, unit, 3);

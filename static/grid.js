@@ -21,12 +21,14 @@ export class PixelGrid {
 
   /** @param {CanvasRenderingContext2D} context @param {import('./view.js').View} view */
   draw(context, view) {
-    const layer = this.map.front?.layer;
-    const side = layer ? layer.atlas.pixel * view.scale : 0;
+    const { front } = this.map;
+    const layer = front?.layer;
+    if (!layer) return;
+    const side = layer.atlas.pixel * view.scale;
     if (side < LINES) return;
     const { atlas } = layer;
     const [columns, rows] = atlas.size(0);
-    const clip = (x, top) => Math.min(Math.max(x, 0), top);
+    const clip = (/** @type {number} */ x, /** @type {number} */ top) => Math.min(Math.max(x, 0), top);
     const x0 = clip(Math.floor((view.bounds.u0 - atlas.view.u[0]) / atlas.pixel), columns);
     const x1 = clip(Math.ceil((view.bounds.u1 - atlas.view.u[0]) / atlas.pixel), columns);
     const y0 = clip(Math.floor((atlas.view.v[1] - view.bounds.v1) / atlas.pixel), rows);
@@ -50,7 +52,7 @@ export class PixelGrid {
     context.textAlign = 'center';
     context.textBaseline = 'middle';
     context.font = `${Math.round(side / 6.2)}px system-ui, sans-serif`;
-    const tone = this.map.front.painted;
+    const tone = front.painted;
     const colours = ramp(tone.ramp);
     for (const { x, y, values, across } of this.blocks) {
       values.forEach((value, i) => {

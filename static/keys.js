@@ -7,13 +7,13 @@ import { keyList, say } from './words.js';
 /** @param {import('./app.js').Frame} frame */
 export function keyboard(frame) {
   const { state } = frame;
-  const travel = (/** @type {KeyboardEvent} */ event, du, dv) => {
+  const travel = (/** @type {KeyboardEvent} */ event, /** @type {number} */ du, /** @type {number} */ dv) => {
     const { view } = frame.motion;
     const part = event.shiftKey ? 0.5 : 0.12;
     const side = Math.min(view.w, view.h) * part;
     frame.glide(du * side, dv * side);
   };
-  const zoom = (factor) => frame.motion.zoomBy(frame.motion.view.w / 2, frame.motion.view.h / 2, factor);
+  const zoom = (/** @type {number} */ factor) => frame.motion.zoomBy(frame.motion.view.w / 2, frame.motion.view.h / 2, factor);
   /** @type {Record<string, (event: KeyboardEvent) => void>} */
   const does = {
     ArrowLeft: (e) => travel(e, 1, 0),

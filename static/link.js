@@ -22,9 +22,10 @@ const ORDER = ['u', 'v', 'width', 'epoch', 'sheet', 'depth', 'tone', 'curve', 'r
  * @returns {string} beginning with #
  */
 export function write(view) {
+  /** @type {Record<string, any>} */ const all = view;
   const parts = [];
   for (const key of ORDER) {
-    const value = view[key];
+    const value = all[key];
     if (value === undefined || value === null) continue;
     const text = Array.isArray(value) ? value.map(short).join(':') : typeof value === 'number' ? short(value) : escape(value);
     parts.push(`${key}=${text}`);
@@ -38,7 +39,7 @@ export function write(view) {
  * @returns {{view: Linked, bad: string[]}}
  */
 export function read(fragment) {
-  /** @type {Linked} */
+  /** @type {Linked & Record<string, any>} */
   const view = {};
   const bad = [];
   for (const part of fragment.replace(/^#/, '').split('&')) {

@@ -88,10 +88,11 @@ export class MapSurface {
 
   /** Takes over new colours for the whole view at once. @param {Tone} tone */
   async recolour(tone) {
-    this.front.tone = tone;
+    let plate = this.front;
+    if (!plate) return;
+    plate.tone = tone;
     if (this.recolouring) return;
     this.recolouring = true;
-    let plate = this.front;
     while (this.front && !same(this.front.tone, this.front.painted)) {
       plate = this.front;
       plate.painted = plate.tone;
@@ -109,7 +110,8 @@ export class MapSurface {
     this.wake();
     clearTimeout(this.rest);
     // The tiles that are out of sight follow when the hand rests.
-    this.rest = window.setTimeout(() => this.tiles.repaint(plate.layer, plate.lut, null), 200);
+    const { layer, lut: last } = plate;
+    this.rest = window.setTimeout(() => this.tiles.repaint(layer, last, null), 200);
   }
 
   /** @param {Set<string>} keys @param {number} id @returns {Promise<void>} when these tiles have that tone */
@@ -255,7 +257,7 @@ export class MapSurface {
     const { atlas } = layer;
     const pixel = atlas.pixelAt(level);
     const [columns, rows] = atlas.size(level);
-    const clip = (x, top) => Math.min(Math.max(Math.round(x), 0), top);
+    const clip = (/** @type {number} */ x, /** @type {number} */ top) => Math.min(Math.max(Math.round(x), 0), top);
     const x0 = clip((view.bounds.u0 - atlas.view.u[0]) / pixel, columns);
     const x1 = clip((view.bounds.u1 - atlas.view.u[0]) / pixel, columns);
     const y0 = clip((atlas.view.v[1] - view.bounds.v1) / pixel, rows);

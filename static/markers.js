@@ -24,7 +24,7 @@ export class Markers {
    */
   constructor(canvas, note, state, does) {
     this.canvas = canvas;
-    this.context = canvas.getContext('2d');
+    this.context = /** @type {CanvasRenderingContext2D} */ (canvas.getContext('2d'));
     this.note = note;
     this.state = state;
     this.does = does;
@@ -77,7 +77,8 @@ export class Markers {
     const { u0, u1, v0, v1 } = view.bounds;
     const seen = this.list.filter(({ u, v }) => u >= u0 && u <= u1 && v >= v0 && v <= v1);
     if (!seen.length) return;
-    const at = this.chosen ? seen.findIndex((o) => Markers.name(o) === Markers.name(this.chosen)) : by > 0 ? -1 : 0;
+    const chosen = this.chosen && Markers.name(this.chosen);
+    const at = chosen ? seen.findIndex((o) => Markers.name(o) === chosen) : by > 0 ? -1 : 0;
     this.state.set({ object: Markers.name(seen[(at + by + seen.length) % seen.length]) });
   }
 
@@ -117,7 +118,8 @@ export class Markers {
   thinned(view) {
     /** @type {Ring[]} */
     const kept = [];
-    const order = this.chosen ? [this.chosen, ...this.list.filter((o) => Markers.name(o) !== Markers.name(this.chosen))] : this.list;
+    const { chosen } = this;
+    const order = chosen ? [chosen, ...this.list.filter((o) => Markers.name(o) !== Markers.name(chosen))] : this.list;
     for (const found of order) {
       const [x, y] = view.apply(found.u, found.v);
       const r = Math.max((found.size ?? 0) * view.scale, LEAST);
@@ -177,8 +179,8 @@ export class Markers {
     const { chosen, note, state } = this;
     note.hidden = !chosen;
     note.replaceChildren();
-    if (!chosen) return;
     const { catalogue } = state.epoch;
+    if (!chosen || !catalogue) return;
     const list = make('dl', {});
     for (const { name, unit: of } of catalogue.columns) {
       if (name === catalogue.id || !(name in chosen.columns)) continue;
@@ -186,7 +188,7 @@ export class Markers {
       const text = typeof value === 'number' ? number(value, 5) : value === null ? '–' : String(value);
       list.append(make('dt', {}, name.replaceAll('_', ' ')), make('dd', {}, [text, unit(of)].filter(Boolean).join(' ')));
     }
-    const word = (key, click) => make('button.word.act', { type: 'button', click }, say(key));
+    const word = (/** @type {string} */ key, /** @type {() => void} */ click) => make('button.word.act', { type: 'button', click }, say(key));
     note.append(
       make('h2', {}, /^\D/.test(Markers.name(chosen)) ? Markers.name(chosen) : say('object', { id: Markers.name(chosen) })),
       list,

@@ -140,15 +140,15 @@ export function flight(from, to) {
   const way = Math.hypot(du, dv);
   if (way < 1e-6 * Math.min(w0, w1)) {
     const length = Math.abs(Math.log(w1 / w0)) / RHO;
-    const path = (t) => (t >= 1 ? to : from.with({ u: from.u + du * t, v: from.v + dv * t, width: w0 * (w1 / w0) ** t }));
+    const path = (/** @type {number} */ t) => (t >= 1 ? to : from.with({ u: from.u + du * t, v: from.v + dv * t, width: w0 * (w1 / w0) ** t }));
     return { path, length };
   }
-  const b = (w, sign) => (w1 * w1 - w0 * w0 + sign * RHO ** 4 * way * way) / (2 * w * RHO * RHO * way);
-  const r = (x) => Math.log(-x + Math.sqrt(x * x + 1));
+  const b = (/** @type {number} */ w, /** @type {number} */ sign) => (w1 * w1 - w0 * w0 + sign * RHO ** 4 * way * way) / (2 * w * RHO * RHO * way);
+  const r = (/** @type {number} */ x) => Math.log(-x + Math.sqrt(x * x + 1));
   const r0 = r(b(w0, 1));
   const r1 = r(b(w1, -1));
   const length = (r1 - r0) / RHO;
-  const path = (t) => {
+  const path = (/** @type {number} */ t) => {
     if (t >= 1) return to;
     const s = t * length;
     const width = (w0 * Math.cosh(r0)) / Math.cosh(RHO * s + r0);

@@ -38,6 +38,7 @@ export class Catalogue {
   async put() {
     this.timer = 0;
     const { view } = this;
+    if (!view) return;
     const key = this.question(view);
     this.running?.abort();
     const control = new AbortController();
@@ -49,7 +50,7 @@ export class Catalogue {
     const wide = { u0: u0 - room.u, u1: u1 + room.u, v0: v0 - room.v, v1: v1 + room.v, d0, d1, limit: LIMIT, epoch: epoch.name };
     const filter = brush ? { lo: brush[0], hi: brush[1] } : {};
     const count = { u0, u1, v0, v1, d0, d1, bins: BINS, epoch: epoch.name };
-    if (epoch.catalogue.rank) Object.assign(count, { column: epoch.catalogue.rank });
+    if (epoch.catalogue?.rank) Object.assign(count, { column: epoch.catalogue.rank });
     try {
       const [found, counts] = await Promise.all([
         question('objects', { ...wide, ...filter }, control.signal),

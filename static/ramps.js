@@ -127,8 +127,8 @@ export function lab(stops, t) {
   const width = q.at - p.at;
   const x = Math.min(Math.max((t - p.at) / width, 0), 1);
   const mix = [0, 1, 2].map((axis) => {
-    const slope = (i) => (points[i + 1].value[axis] - points[i].value[axis]) / (points[i + 1].at - points[i].at);
-    const tangent = (i) => {
+    const slope = (/** @type {number} */ i) => (points[i + 1].value[axis] - points[i].value[axis]) / (points[i + 1].at - points[i].at);
+    const tangent = (/** @type {number} */ i) => {
       if (i === 0) return slope(0);
       if (i === points.length - 1) return slope(points.length - 2);
       const [before, after] = [slope(i - 1), slope(i)];

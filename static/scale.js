@@ -14,6 +14,12 @@ export class ScaleEdge {
   constructor(root, state, motionOf) {
     this.state = state;
     this.motionOf = motionOf;
+    /** Lengths at both ends of the ladder, atlas unit. */
+    this.top = 1;
+    this.bottom = 1;
+    /** Its place in the field, CSS pixels. */
+    this.pad = 0;
+    this.reach = 0;
     root.setAttribute('aria-label', say('scale'));
     this.field = make('div.field');
     this.plot = svg('svg', { 'aria-hidden': 'true' });

@@ -31,7 +31,8 @@ export class State {
 
   /** @param {Partial<Pick<State, 'epoch'|'sheetName'|'slabs'|'tones'|'brush'|'object'|'lengths'|'markers'>>} patch */
   set(patch) {
-    const changed = new Set(Object.keys(patch).filter((key) => patch[key] !== this[key]));
+    /** @type {Record<string, any>} */ const now = this;
+    const changed = new Set(Object.entries(patch).flatMap(([key, value]) => (value === now[key] ? [] : [key])));
     if (!changed.size) return;
     Object.assign(this, patch);
     this.changed(changed);
@@ -97,10 +98,10 @@ export class State {
     /** @type {[string, Record<string, string>][]} */
     const trouble = [];
     const epoch = link.epoch ? atlas.epochs.find((e) => e.name === link.epoch) : atlas.epochs[0];
-    if (!epoch) trouble.push(['trouble_epoch', { name: link.epoch }]);
+    if (!epoch) trouble.push(['trouble_epoch', { name: link.epoch ?? '' }]);
     this.epoch = epoch ?? atlas.epochs[0];
     const sheet = link.sheet ? atlas.sheet(this.epoch, link.sheet) : this.epoch.sheets[0];
-    if (!sheet) trouble.push(['trouble_sheet', { name: link.sheet }]);
+    if (!sheet) trouble.push(['trouble_sheet', { name: link.sheet ?? '' }]);
     this.sheetName = (sheet ?? this.epoch.sheets[0]).name;
     const { sheet: shown } = this;
     const tone = { ...this.usualTone(shown) };

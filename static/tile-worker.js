@@ -113,7 +113,7 @@ const answers = {
   },
 };
 
-self.onmessage = ({ data }) => answers[data.type](data);
+self.onmessage = ({ data }) => answers[/** @type {keyof typeof answers} */ (data.type)](data);
 
 /** @param {Recipe} recipe @param {AbortSignal} signal @param {boolean} fresh @returns {Promise<Held>} */
 async function make(recipe, signal, fresh) {
@@ -173,7 +173,7 @@ function mean(tiles, weights, coding, weightCoding) {
     if (!codes || (weights && !weight)) return;
     for (let i = 0; i < PIXELS; i++) {
       if (codes[i] === 0) continue;
-      const w = heavy ? heavy[weight[i]] : 1;
+      const w = heavy && weight ? heavy[weight[i]] : 1;
       above[i] += w * table[codes[i]];
       below[i] += w;
     }
@@ -191,8 +191,9 @@ function recode(values, coding) {
 /** @param {import('./coding.js').Coding} coding */
 function known(coding) {
   const name = JSON.stringify(coding);
-  if (!tables.has(name)) tables.set(name, valueTable(coding));
-  return tables.get(name);
+  const table = tables.get(name) ?? valueTable(coding);
+  tables.set(name, table);
+  return table;
 }
 
 /** @param {string} key @param {Held} tile @param {number} lut @param {number} bytes */

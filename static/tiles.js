@@ -115,7 +115,7 @@ export class Tiles {
     if (performance.now() < this.pause.until) return;
     const room = this.pause.delay ? 1 : AT_ONCE;
     while (this.loading < room && this.queue.length) {
-      const tile = this.queue.shift();
+      const tile = /** @type {Tile} */ (this.queue.shift());
       tile.state = 'loading';
       this.loading++;
       const { key, layer, level, row, column, asked: lut } = tile;
@@ -272,7 +272,7 @@ export class Tiles {
     for (const answer of await Promise.all(answers)) {
       if (!answer) continue;
       nothing += answer.nothing;
-      answer.counts.forEach((n, i) => (counts[i] += n));
+      for (let i = 0; i < counts.length; i++) counts[i] += answer.counts[i];
     }
     return { counts, nothing };
   }

@@ -19,6 +19,14 @@ export class ToneEdge {
   constructor(root, state) {
     this.state = state;
     /** @type {Float64Array|null} */ this.counts = null;
+    /** @type {[number, number]} the ends they were counted between, on the axis of the sheet's coding */ this.counted = [0, 1];
+    /** Ends of the axis, and what lies between. */
+    this.bottom = 0;
+    this.top = 1;
+    this.span = 1;
+    /** Of the field, CSS pixels. */
+    this.width = 0;
+    this.height = 0;
     /** @type {number|null} the value under the cursor */ this.reading = null;
     root.setAttribute('aria-label', say('tone'));
     this.unit = make('div.unit');
@@ -35,7 +43,7 @@ export class ToneEdge {
     this.curve = words(say('curve'), (curve) => state.setTone({ curve }));
     this.ramps = words(say('ramps'), (name) => state.setTone({ ramp: name }));
     this.ramps.root.classList.add('ramps');
-    const act = (key, action) => make('button.word.act', { type: 'button', title: say(`${key}_title`), click: action }, say(key));
+    const act = (/** @type {string} */ key, /** @type {() => void} */ action) => make('button.word.act', { type: 'button', title: say(`${key}_title`), click: action }, say(key));
     this.acts = make('div.words', {}, act('tone_auto', () => this.auto()), act('tone_reset', () => this.reset()));
     root.append(this.unit, this.field, this.acts, this.curve.root, this.ramps.root);
     this.field.addEventListener('wheel', (event) => this.wheel(event), { passive: false });
@@ -147,13 +155,14 @@ export class ToneEdge {
 
   /** Both ends from the values in view: all but the emptiest fifth and the brightest few pixels. */
   auto() {
-    const total = this.counts?.reduce((a, b) => a + b, 0) ?? 0;
-    if (!total) return;
-    const level = (part) => {
+    const { counts } = this;
+    const total = counts?.reduce((a, b) => a + b, 0);
+    if (!counts || !total) return;
+    const level = (/** @type {number} */ part) => {
       const [first, last] = this.counted;
       let sum = 0;
-      const i = this.counts.findIndex((n) => (sum += n) >= part * total);
-      return first + ((i + 0.5) / this.counts.length) * (last - first);
+      const i = counts.findIndex((n) => (sum += n) >= part * total);
+      return first + ((i + 0.5) / counts.length) * (last - first);
     };
     const [lo, hi] = [level(0.05), level(0.9995)];
     const room = Math.max(hi - lo, this.log ? 0.3 : this.span / 100);
@@ -211,7 +220,7 @@ export class ToneEdge {
   drawStrip(tone) {
     const [rows, across] = [Math.round(this.height * devicePixelRatio), 9];
     Object.assign(this.strip, { width: across, height: rows });
-    const context = this.strip.getContext('2d');
+    const context = /** @type {CanvasRenderingContext2D} */ (this.strip.getContext('2d'));
     const picture = context.createImageData(across, rows);
     const colours = ramp(tone.ramp);
     for (let i = 0; i < rows; i++) {
@@ -225,12 +234,12 @@ export class ToneEdge {
   }
 
   drawTicks() {
-    const marks = [];
+    /** @type {Element[]} */ const marks = [];
     const { tone } = this.state;
     const tall = this.bright.label.offsetHeight;
     const [hi, lo] = [this.y(tone.hi) - 2 - tall / 2, this.y(tone.lo) + 2 + tall / 2];
     const room = 0.8 * tall + 2;
-    const add = (x, text) => {
+    const add = (/** @type {number} */ x, /** @type {string} */ text) => {
       const y = ((this.top - x) / this.span) * this.height;
       if (Math.min(Math.abs(y - hi), Math.abs(y - lo)) < room) return;
       marks.push(svg('text', { x: 0, y: y + 3.5 }, text));
@@ -241,23 +250,24 @@ export class ToneEdge {
     } else {
       const rough = this.span / 6;
       const unitStep = 10 ** Math.floor(Math.log10(rough));
-      const size = [1, 2, 5, 10].map((m) => m * unitStep).find((s) => s >= rough);
+      const size = [1, 2, 5].map((m) => m * unitStep).find((s) => s >= rough) ?? 10 * unitStep;
       for (let x = Math.ceil(this.bottom / size) * size; x <= this.top; x += size) add(x, number(Math.abs(x) < size / 2 ? 0 : x, 3));
     }
     this.ticks.replaceChildren(...marks);
   }
 
   drawBars() {
-    if (!this.counts || !this.height) return this.bars.setAttribute('d', '');
+    const { counts } = this;
+    if (!counts || !this.height) return this.bars.setAttribute('d', '');
     // Few pixels in view make coarse bins.
-    const total = this.counts.reduce((a, b) => a + b, 0);
-    const merge = Math.max(Math.round(this.counts.length / Math.max(2 * Math.sqrt(total), 12)), 1);
-    const bars = Array.from({ length: Math.ceil(this.counts.length / merge) }, (_, i) => this.counts.slice(i * merge, (i + 1) * merge).reduce((a, b) => a + b, 0));
+    const total = counts.reduce((a, b) => a + b, 0);
+    const merge = Math.max(Math.round(counts.length / Math.max(2 * Math.sqrt(total), 12)), 1);
+    const bars = Array.from({ length: Math.ceil(counts.length / merge) }, (_, i) => counts.slice(i * merge, (i + 1) * merge).reduce((a, b) => a + b, 0));
     const most = Math.max(...bars) || 1;
     const [first, last] = this.counted;
     const right = this.width;
     const reach = this.width * 0.62;
-    const y = (i) => (((this.top - first - ((i * merge) / this.counts.length) * (last - first)) / this.span) * this.height).toFixed(1);
+    const y = (/** @type {number} */ i) => (((this.top - first - ((i * merge) / counts.length) * (last - first)) / this.span) * this.height).toFixed(1);
     let d = `M${right} ${y(0)}`;
     bars.forEach((n, i) => (d += `H${(right - reach * Math.sqrt(n / most)).toFixed(1)}V${y(i + 1)}`));
     this.bars.setAttribute('d', `${d}H${right}Z`);

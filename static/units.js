@@ -3,6 +3,7 @@
 
 import { LOCALE } from './words.js';
 
+/** @type {Record<string, string>} */
 const SUPERSCRIPT = { '-': '⁻', 0: '⁰', 1: '¹', 2: '²', 3: '³', 4: '⁴', 5: '⁵', 6: '⁶', 7: '⁷', 8: '⁸', 9: '⁹', '.': '·' };
 
 /** @param {string|number} digits */
@@ -14,8 +15,9 @@ const formats = new Map();
 /** @param {number} x @param {Intl.NumberFormatOptions} options */
 function format(x, options) {
   const key = JSON.stringify(options);
-  if (!formats.has(key)) formats.set(key, new Intl.NumberFormat(LOCALE, { useGrouping: false, ...options }));
-  return formats.get(key).format(x).replace('-', '−');
+  const known = formats.get(key) ?? new Intl.NumberFormat(LOCALE, { useGrouping: false, ...options });
+  formats.set(key, known);
+  return known.format(x).replace('-', '−');
 }
 
 /**
@@ -75,7 +77,9 @@ export function quantity(value, unitText, digits = 4) {
  * @property {string} unit used by 'other'
  */
 
+/** @type {Record<string, number>} */
 const ARCSEC = { deg: 3600, degree: 3600, arcmin: 60, arcsec: 1, mas: 1e-3, rad: (180 / Math.PI) * 3600 };
+/** @type {Record<string, number>} */
 const MPC = { Gpc: 1e3, Mpc: 1, kpc: 1e-3, pc: 1e-6 };
 
 /**
@@ -123,9 +127,10 @@ export function length(length, measure, digits = 3) {
  * @returns {{length: number, text: string, major: boolean}[]} longest first; major where a row of rungs begins
  */
 export function rungs(lo, hi, measure) {
+  /** @type {{length: number, text: string, major: boolean}[]} */
   const found = [];
   const [a, b] = [lo * measure.factor, hi * measure.factor];
-  const add = (q, major) => {
+  const add = (/** @type {number} */ q, /** @type {boolean} */ major) => {
     if (q < a * 0.9999 || q > b * 1.0001) return;
     const l = q / measure.factor;
     found.push({ length: l, text: length(l, measure, 3), major });

@@ -1,6 +1,7 @@
 // Every word on screen, in one table. Another language is one more table with the same keys; `?lang=` or the browser
 // decides. Values may hold {names} that say() fills in.
 
+/** @type {Record<string, Record<string, any>>} */
 const TABLES = {
   en: {
     untitled: 'Atlas',
@@ -104,12 +105,11 @@ const TABLES = {
   },
 };
 
-/** @returns {keyof typeof TABLES} */
 function choose() {
   const asked = new URLSearchParams(location.search).get('lang');
   for (const tag of [asked, ...(navigator.languages ?? [])]) {
     const short = tag?.slice(0, 2).toLowerCase();
-    if (short && short in TABLES) return /** @type {keyof typeof TABLES} */ (short);
+    if (short && short in TABLES) return short;
   }
   return 'en';
 }
@@ -126,9 +126,9 @@ export const LOCALE = language;
  * @returns {string}
  */
 export function say(key, fill = {}) {
-  const text = table[key];
+  /** @type {string|undefined} */ const text = table[key];
   if (text === undefined) throw new RangeError(`words: no entry ${key}`);
-  return text.replace(/\{(\w+)\}/g, (whole, name) => (name in fill ? String(fill[name]) : whole));
+  return text.replace(/\{(\w+)\}/g, (/** @type {string} */ whole, /** @type {string} */ name) => (name in fill ? String(fill[name]) : whole));
 }
 
 /** The keys and what they do. @returns {[string, string][]} */

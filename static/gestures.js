@@ -7,6 +7,26 @@ const TAP_SLOP = 8;
 const TAP_TIME = 350;
 const DOUBLE_TIME = 300;
 
+/** A wheel zooms by at most so much an event, and so much a second (natural logarithm of the factor). */
+const WHEEL_MOST = 0.35;
+const WHEEL_PACE = 5;
+
+/**
+ * What a wheel asks for, as a factor of zoom. Wheels differ a hundredfold in what they send: fast ones are held back.
+ * @returns {(event: WheelEvent) => number}
+ */
+export function wheelFactor() {
+  let last = -1e9;
+  return (event) => {
+    event.preventDefault();
+    // A line is about 18 pixels; a pinch on a trackpad comes as a wheel with ctrl and small steps.
+    const pixels = event.deltaY * (event.deltaMode === 1 ? 18 : event.deltaMode === 2 ? 400 : 1);
+    const most = Math.min(0.05 + (WHEEL_PACE * (event.timeStamp - last)) / 1000, WHEEL_MOST);
+    last = event.timeStamp;
+    return Math.exp(-Math.min(Math.max(pixels * (event.ctrlKey ? 0.01 : 0.0022), -most), most));
+  };
+}
+
 /**
  * @param {HTMLElement} element
  * @param {() => import('./motion.js').Motion} motionOf
@@ -21,6 +41,7 @@ export function listen(element, motionOf, hands) {
   let pressed = 0;
   let lastTap = { at: -1e9, x: 0, y: 0 };
   let wheelRest = 0;
+  const turned = wheelFactor();
 
   /** @param {{clientX: number, clientY: number}} event @returns {[number, number]} */
   const place = (event) => {
@@ -90,14 +111,9 @@ export function listen(element, motionOf, hands) {
   element.addEventListener(
     'wheel',
     (event) => {
-      event.preventDefault();
       const [x, y] = place(event);
-      // A line is about 18 pixels; a pinch on a trackpad comes as a wheel with ctrl and small steps.
-      const pixels = event.deltaY * (event.deltaMode === 1 ? 18 : event.deltaMode === 2 ? 400 : 1);
-      const rate = event.ctrlKey ? 0.01 : 0.0022;
-      const bounded = Math.min(Math.max(pixels * rate, -1), 1);
       hands.begin();
-      motionOf().zoomBy(x, y, Math.exp(-bounded));
+      motionOf().zoomBy(x, y, turned(event));
       clearTimeout(wheelRest);
       wheelRest = window.setTimeout(hands.settled, 150);
     },

@@ -5,9 +5,9 @@ import { shade, step } from './lut.js';
 import { ramp } from './ramps.js';
 import { number } from './units.js';
 
-/** Sides of a pixel, CSS pixels, from which lines are drawn and from which numbers are written. */
+/** Sides of a pixel, CSS pixels, from which lines and numbers are drawn; a power of ten has its own line up to the second. */
 const LINES = 32;
-const NUMBERS = 64;
+const ONE_LINE = 64;
 
 export class PixelGrid {
   /** @param {import('./map.js').MapSurface} map @param {() => void} wake */
@@ -46,24 +46,28 @@ export class PixelGrid {
       context.lineTo(left + x1 * side, top + y * side);
     }
     context.stroke();
-    if (side < NUMBERS) return;
     const key = [layer.id, x0, x1, y0, y1].join();
     if (key !== this.key) this.fetch(key, layer, x0, x1, y0, y1);
     context.textAlign = 'center';
     context.textBaseline = 'middle';
-    context.font = `${Math.round(side / 6.2)}px system-ui, sans-serif`;
+    const size = side < ONE_LINE ? Math.max(side / 4.4, 8.5) : side / 6.2;
+    context.font = `${size.toFixed(1)}px system-ui, sans-serif`;
+    context.globalAlpha = Math.min((side - LINES) / 8 + 0.2, 1);
     const tone = front.painted;
     const colours = ramp(tone.ramp);
     for (const { x, y, values, across } of this.blocks) {
       values.forEach((value, i) => {
         if (Number.isNaN(value)) return;
         const [cx, cy] = [left + (x + (i % across) + 0.5) * side, top + (y + Math.floor(i / across) + 0.5) * side];
-        const text = number(value, 3).replace(' × ', '×');
+        const [text, power] = side < ONE_LINE ? number(value, 3).split(' × ') : [number(value, 3).replace(' × ', '×')];
         const k = 3 * step(shade(value, tone));
         context.fillStyle = colours[k] + 2 * colours[k + 1] + colours[k + 2] > 460 ? '#08090c' : '#f4f2ec';
-        context.fillText(text, cx, cy);
+        if (!power) return context.fillText(text, cx, cy);
+        context.fillText(text, cx, cy - 0.55 * size);
+        context.fillText(`×${power}`, cx, cy + 0.6 * size);
       });
     }
+    context.globalAlpha = 1;
   }
 
   /** @param {string} key @param {import('./atlas.js').Layer} layer @param {number} x0 @param {number} x1 @param {number} y0 @param {number} y1 */

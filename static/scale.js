@@ -2,6 +2,7 @@
 // the map, as far as the margin goes; the rung at the thumb is the width in view. In: view, measure. Out: a new width.
 
 import { make, svg, words } from './dom.js';
+import { wheelFactor } from './gestures.js';
 import { handle } from './handle.js';
 import { length, measures, rungs } from './units.js';
 import { say } from './words.js';
@@ -37,10 +38,10 @@ export class ScaleEdge {
     this.field.addEventListener('pointerdown', (event) => {
       if (event.target !== this.thumb.root) this.go(this.at(event.clientY - this.field.getBoundingClientRect().top), true);
     });
+    const turned = wheelFactor();
     this.field.addEventListener('wheel', (event) => {
-      event.preventDefault();
       const { view } = motionOf();
-      motionOf().zoomBy(view.w / 2, view.h / 2, Math.exp(-event.deltaY * 0.0022));
+      motionOf().zoomBy(view.w / 2, view.h / 2, turned(event));
     }, { passive: false });
     this.choice = words(say('scale'), (name) => state.set({ lengths: name === this.list[0].name ? '' : name }));
     this.choice.root.classList.add('column');

@@ -204,12 +204,14 @@ export class ToneEdge {
     this.unit.textContent = unit(sheet.unit);
     this.plot.setAttribute('viewBox', `0 0 ${this.width} ${this.height}`);
     this.drawStrip(tone);
+    // Before the ticks, which keep clear of these numbers.
+    this.bright.label.textContent = number(tone.hi, 3);
+    this.dark.label.textContent = number(tone.lo, 3);
     this.drawTicks();
     this.drawBars();
     this.drawMark();
     const range = { min: this.value(this.bottom), max: this.value(this.top) };
     for (const [grip, which] of /** @type {const} */ ([[this.bright, 'hi'], [this.dark, 'lo']])) {
-      grip.label.textContent = number(tone[which], 3);
       grip.place(0, this.y(tone[which]), { now: tone[which], ...range, text: quantity(tone[which], sheet.unit, 3) });
     }
     this.curve.update(curves(sheet).map((value) => ({ value, text: say(`curve_${value}`) })), tone.curve);

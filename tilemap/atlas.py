@@ -24,7 +24,7 @@ from tilemap.pyramid.combine import Coded, combine
 from tilemap.pyramid.description import faults, read_description
 from tilemap.pyramid.reader import ArrayReader
 from tilemap.pyramid.resample import overlaps
-from tilemap.quantities import number_in, suggestion, unit_named
+from tilemap.quantities import number_in, span, suggestion, unit_named
 
 MOST_PIXELS = 16384**2
 """The largest piece, in pixels: 1 GiB of values, and some 4 GiB while they are put together."""
@@ -312,8 +312,8 @@ class Atlas:
         """The window and the view must share something along the axis."""
         if not self._wraps(axis) and not (middle - size / 2 < side[1] and middle + size / 2 > side[0]):
             raise InputError(
-                f"the window is {name} {middle - size / 2:g} to {middle + size / 2:g}, outside the view, which is "
-                f"{name} {side[0]:g} to {side[1]:g} {self.info['view']['unit']}"
+                f"the window is {name} {span(middle - size / 2, middle + size / 2)}, outside the view, which is "
+                f"{name} {span(*side)} {self.info['view']['unit']}"
             )
 
     def _wraps(self, axis: int) -> bool:

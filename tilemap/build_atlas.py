@@ -29,6 +29,7 @@ from tilemap.project.scatter import Plan, make_plan
 from tilemap.pyramid.grid import TILE, level_shapes
 from tilemap.pyramid.publish import FORMAT, check_target, file_sha256, publish
 from tilemap.pyramid.store import create_group
+from tilemap.quantities import span
 from tilemap.runners.local import LocalRunner
 from tilemap.sizes import byte_count
 from tilemap.sources import Facts, Source, open_source
@@ -195,8 +196,7 @@ def _version(name: str) -> str | None:
 
 def _where(build: BuildFile, camera: Camera, facts: Facts) -> str:
     unit = build.view.unit
-    (u0, u1), (v0, v1), (d0, d1) = camera.u, camera.v, camera.depth
-    text = f"it covers {u0:.6g} to {u1:.6g}, {v0:.6g} to {v1:.6g} and {d0:.6g} to {d1:.6g} {unit} deep"
+    text = f"it covers {span(*camera.u)}, {span(*camera.v)} and {span(*camera.depth)} {unit} deep"
     if facts.box is not None:
         text += f", the box is {' x '.join(f'{side:.6g}' for side in facts.box)} {unit}"
     return text

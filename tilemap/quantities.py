@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+import math
 import re
 import warnings
 from collections.abc import Iterable
@@ -41,6 +42,13 @@ def suggestion(word: str, known: Iterable[str]) -> str:
     if close is not None:
         return f"the nearest known is {close!r}"
     return f"known here: {', '.join(names)}" if names else "none is known here"
+
+
+def span(low: float, high: float) -> str:
+    """ "low to high", to six digits, or as many more as it takes to tell the two apart and show how wide the range is."""
+    size, width = max(abs(low), abs(high)), abs(high - low)
+    digits = 6 if width == 0 else min(max(6, math.ceil(math.log10(size / width)) + 3), 17)
+    return f"{low:.{digits}g} to {high:.{digits}g}"
 
 
 def unit_named(text: str, kind: str | None = None) -> u.UnitBase:

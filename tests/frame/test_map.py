@@ -58,10 +58,10 @@ def test_a_window_of_some_slabs_shows_the_weighted_mean(screen, atlas):
     check_colours(screen, atlas, "temperature", "log", "kelpfire", 4e3, 4e5, slice(1, 3), depth)
 
 
-@pytest.mark.parametrize("ratio", [1, 1.25, 2])
+@pytest.mark.parametrize("ratio", [1, 1.1, 1.25, 1.5, 2, 2.625, 3])
 def test_no_seam_shows_at_any_fractional_zoom(open_screen, ratio):
     screen = open_screen("#u=50&v=50&width=70&tone=1e5:1e6", width=720, height=480, ratio=ratio, atlas="even")
-    for width in (73.1, 33.333, 17.77, 9.3):
+    for width in (73.1, 33.333, 17.77, 9.3, *np.random.default_rng(round(100 * ratio)).uniform(1, 74, 4).round(4)):
         screen.go(f"#u=50.123&v=49.77&width={width}&tone=1e5:1e6")
         shown = screen.pixels()[2:-2, 2:-2, :3]
         assert (shown == shown[0, 0]).all() and shown.max() > 50, f"width {width}"
@@ -85,11 +85,40 @@ def test_the_innermost_view_goes_past_one_pixel_with_crisp_edges(screen):
     assert 5 < len(edges) <= np.ceil(len(row) / side)
 
 
-def test_values_are_written_on_wide_pixels(screen):
-    screen.go(f"#u=50.01&v=40.01&width={4 * PIXEL}&markers=off")
+@pytest.mark.parametrize("side", [40, 64, 100])
+def test_the_numbers_written_on_wide_pixels_are_those_in_the_atlas(screen, atlas, side):
+    box = screen.map_box()
+    screen.page.evaluate(
+        """() => { window.written = []; const { fillText } = CanvasRenderingContext2D.prototype;
+        CanvasRenderingContext2D.prototype.fillText = function (text, x, y) {
+          if (this.canvas.id === 'marks') window.written.push([text, x, y]);
+          return fillText.call(this, text, x, y); }; }"""
+    )
+    screen.go(f"#u=50.01&v=40.01&width={box['width'] / side * PIXEL}&markers=off")
+    screen.page.wait_for_timeout(300)
+    screen.page.evaluate("window.written.length = 0")
+    screen.page.mouse.move(400, 300)  # the map is drawn anew
     screen.page.wait_for_timeout(200)
-    screen.picture("pixels")
-    assert (screen.pixels("#marks")[:, :, 3] > 200).sum() > 500
+    screen.picture(f"pixels-{side}")
+    words = screen.page.evaluate("window.written")
+    powers = {digit: str(k) for k, digit in enumerate("⁰¹²³⁴⁵⁶⁷⁸⁹")}
+    found = {}
+    for text, x, y in dict.fromkeys(map(tuple, words)):
+        u, v = screen.under(x + box["x"], y + box["y"])
+        place = int(u / PIXEL), int((75 - v) / PIXEL)
+        found[place] = found.get(place, "") + text
+    assert len(found) > 0.8 * box["width"] * box["height"] / side**2
+    for (column, row), text in found.items():
+        front, _, power = text.partition("×10")
+        value = float(front) * 10.0 ** int("".join(powers[digit] for digit in power) or 0)
+        middle = ((column + 0.5) * PIXEL, 75 - (row + 0.5) * PIXEL)
+        assert value == pytest.approx(float(atlas.read("gas", middle, PIXEL, PIXEL).values[0, 0]), rel=6e-3)
+
+
+def test_no_number_is_written_on_pixels_that_are_too_small_for_it(screen):
+    screen.go(f"#u=50.01&v=40.01&width={screen.map_box()['width'] / 31 * PIXEL}&markers=off")
+    screen.page.wait_for_timeout(300)
+    assert not screen.pixels("#marks")[60:-60, 60:-60, 3].any()
 
 
 def test_coarse_tiles_stand_in_while_fine_ones_are_awaited(open_screen, live):

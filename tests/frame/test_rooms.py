@@ -85,6 +85,30 @@ def test_on_a_phone_an_edge_opens_under_the_thumb_and_closes_on_the_map(open_scr
     assert strip.bounding_box() == before
 
 
+@pytest.mark.parametrize(
+    "edge, part, begin, way, moved",
+    [
+        ("tone", "tone", (0.5, 0.1), (0, 40), lambda value: 3e3 < float(value.split(":")[1]) < 3e6),
+        ("scale", "width", (0.5, 0.3), (0, 120), lambda value: float(value) < 30),
+        ("depth", "depth", (0.3, 0.5), (100, 0), lambda value: value.startswith("0:66")),
+        ("census", "census", (0.3, 0.5), (120, 0), lambda value: float(value.split(":")[0]) > 1e9),
+    ],
+)
+def test_on_a_phone_a_drag_that_begins_on_a_strip_opens_it_and_acts(open_screen, edge, part, begin, way, moved):
+    screen = open_screen("#u=50&v=37&width=60&tone=3e3:3e6", width=390, height=844, ratio=2, touch=True)
+    screen.page.wait_for_selector("#census .bar", state="attached")
+    box = screen.page.locator(f"#{edge}").bounding_box()
+    x, y = box["x"] + begin[0] * box["width"], box["y"] + begin[1] * box["height"]
+    touch = screen.page.context.new_cdp_session(screen.page)
+    for step in range(7):
+        point = {"x": x + way[0] * step / 6, "y": y + way[1] * step / 6}
+        kind = "touchMove" if step else "touchStart"
+        touch.send("Input.dispatchTouchEvent", {"type": kind, "touchPoints": [point]})
+    touch.send("Input.dispatchTouchEvent", {"type": "touchEnd", "touchPoints": []})
+    screen.settle()
+    assert moved(screen.link().get(part, "nan"))
+
+
 def test_on_a_phone_a_tap_reads_the_value_there(open_screen, atlas):
     screen = open_screen("#u=50&v=37&width=4", width=390, height=844, ratio=2, touch=True)
     box = screen.map_box()

@@ -23,6 +23,17 @@ def test_the_wheel_zooms_about_the_pointer(open_screen, notches, motion):
     assert np.hypot(after[0] - before[0], after[1] - before[1]) < 0.6 * screen.place()[2] / box["width"]
 
 
+@pytest.mark.parametrize("x", [500, 1080])
+def test_a_wheel_with_large_steps_zooms_no_more_than_a_half_closer(screen, x):
+    """On the map, and on the ladder."""
+    screen.go(START)
+    screen.page.mouse.move(x, 400)
+    screen.page.wait_for_timeout(200)
+    screen.page.mouse.wheel(0, -2400)
+    screen.settle()
+    assert 1.3 < 40 / screen.place()[2] < 1.5
+
+
 def test_a_drag_takes_the_place_under_the_hand_along(screen):
     screen.go(START)
     place = screen.under(500, 400)

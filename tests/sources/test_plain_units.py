@@ -7,7 +7,7 @@ import numpy as np
 import pytest
 
 from tilemap.errors import InputError
-from tilemap.quantities import number_in, split_quantity, unit_named
+from tilemap.quantities import number_in, span, split_quantity, unit_named
 from tilemap.sources.units import plain_unit, stated_by_attributes, temperature_factor
 
 
@@ -72,3 +72,16 @@ def test_an_h_in_a_unit_is_refused_because_it_means_hours(text):
 def test_what_is_no_length_is_refused(value):
     with pytest.raises(InputError, match="is not a length"):
         number_in(value, u.Mpc, "length")
+
+
+@pytest.mark.parametrize(
+    ("low", "high", "said"),
+    [
+        (0, 8, "0 to 8"),
+        (5, 5.0000003, "5 to 5.0000003"),
+        (-1e-9, 1e-9, "-1e-09 to 1e-09"),
+        (12345.678901, 12345.678904, "12345.678901 to 12345.678904"),
+    ],
+)
+def test_a_range_is_said_to_enough_digits_to_tell_its_ends_apart(low, high, said):
+    assert span(low, high) == said

@@ -16,9 +16,10 @@ from typing import Any, TypeAlias
 import astropy.units as u
 import numpy as np
 from astropy.wcs import WCS
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
 
 from tilemap.errors import InputError
+from tilemap.outline import Inside, inside
 from tilemap.pyramid.coding import Coding
 from tilemap.pyramid.combine import Coded, combine
 from tilemap.pyramid.description import faults, read_description
@@ -240,6 +241,31 @@ class Atlas:
         values[~rows_inside, :] = np.nan
         values[:, ~columns_inside] = np.nan
         return self._piece(values, described, epoch, chosen, window)
+
+    def inside(
+        self,
+        sheet: str,
+        outline: ArrayLike,
+        slabs: int | slice | None = None,
+        epoch: str | None = None,
+    ) -> Inside:
+        """Area, mean, spread and total of a sheet inside an outline.
+
+        Parameters
+        ----------
+        sheet, slabs, epoch
+            As for `read`.
+        outline : (points, 2)
+            Corners (u, v) in the unit of the view; the last is joined to the first. Pixels that it cuts count in part.
+
+        Raises
+        ------
+        InputError
+            As `read` does, or where the outline is none or lies outside the view.
+        DamagedError
+            Where a tile that is needed is damaged.
+        """
+        return inside(self, sheet, outline, slabs, epoch)
 
     def _slabs(self, slabs: int | slice | None) -> tuple[int, ...]:
         count = self.slab_count

@@ -15,6 +15,7 @@ from flask import Flask, Response, jsonify
 from werkzeug.exceptions import HTTPException
 
 from tilemap.errors import InputError, NotSoError
+from tilemap.server.inside import inside
 from tilemap.server.objects import objects
 from tilemap.server.pages import frame_folder, pages
 from tilemap.server.shelf import Shelf
@@ -60,6 +61,7 @@ def make_app(atlases: Iterable[str | Path]) -> Callable[[dict[str, Any], Start],
     flask.url_map.redirect_defaults = False
     flask.register_blueprint(pages)
     flask.register_blueprint(objects)
+    flask.register_blueprint(inside)
 
     @flask.after_request
     def secure(response: Response) -> Response:

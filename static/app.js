@@ -10,6 +10,7 @@ import { listen } from './gestures.js';
 import { PixelGrid } from './grid.js';
 import { keyboard, keysNote } from './keys.js';
 import { Linking } from './linking.js';
+import { Looks } from './looks.js';
 import { MapSurface } from './map.js';
 import { Markers } from './markers.js';
 import { Motion } from './motion.js';
@@ -69,6 +70,7 @@ export class Frame {
     this.sheets = words(say('sheets'), (sheetName) => this.state.set({ sheetName }));
     this.sheets.root.classList.add('column');
     at('sheets').append(this.sheets.root);
+    this.looks = new Looks();
     this.linking = new Linking(this);
     this.title();
     listen(this.hand, () => this.motion, {
@@ -96,8 +98,8 @@ export class Frame {
     if (age) facts.push(say('age', { age: fixed(age, 1) }));
     at('title').replaceChildren(make('h1', {}, make('a', { href: '../', title: atlas.json.about ?? '' }, atlas.title || say('untitled'))), make('div.dim', {}, facts.join(' · ')));
     if (atlas.epochs.length > 1) at('title').append(this.epochs(atlas.epochs));
-    const keys = make('button.word.act', { type: 'button', click: () => this.showKeys() }, say('keys'));
-    at('links').replaceChildren(this.linking.word, keys);
+    const keys = make('button.word.act.keys', { type: 'button', click: () => this.showKeys() }, say('keys'));
+    at('links').replaceChildren(this.linking.word, keys, ...this.looks.words);
   }
 
   /** A word for each epoch, to step through in place. @param {import('./atlas.js').Epoch[]} list */

@@ -33,7 +33,7 @@ export class CensusEdge {
     new ResizeObserver(() => this.draw()).observe(this.field);
   }
 
-  /** @param {string} word @param {0|1} which */
+  /** @param {import('./words.js').Word} word @param {0|1} which */
   end(word, which) {
     const column = this.state.epoch.catalogue?.rank ?? '';
     const grip = handle(this.field, {

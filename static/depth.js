@@ -17,7 +17,7 @@ export class DepthEdge {
     this.field.append(this.plot);
     /** of the field, CSS pixels */ this.width = 0;
     this.pad = 6;
-    /** @type {(name: string, drag: (x: number) => void, nudge: (steps: number) => void, begin?: (x: number) => void) => ReturnType<typeof handle>} */
+    /** @type {(name: import('./words.js').Word, drag: (x: number) => void, nudge: (steps: number) => void, begin?: (x: number) => void) => ReturnType<typeof handle>} */
     const part = (name, drag, nudge, begin) => {
       const grip = handle(this.field, { name: say(name), along: 'horizontal', drag, nudge, begin, reset: () => this.whole() });
       this.field.append(grip.root);

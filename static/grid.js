@@ -4,6 +4,7 @@
 import { shade, step } from './lut.js';
 import { ramp } from './ramps.js';
 import { number } from './units.js';
+import { say } from './words.js';
 
 /** Sides of a pixel, CSS pixels, from which lines and numbers are drawn; a power of ten has its own line up to the second. */
 const LINES = 32;
@@ -55,16 +56,18 @@ export class PixelGrid {
     context.globalAlpha = Math.min((side - LINES) / 8 + 0.2, 1);
     const tone = front.painted;
     const colours = ramp(tone.ramp);
+    const times = say('times');
+    const tight = times.trim();
     for (const { x, y, values, across } of this.blocks) {
       values.forEach((value, i) => {
         if (Number.isNaN(value)) return;
         const [cx, cy] = [left + (x + (i % across) + 0.5) * side, top + (y + Math.floor(i / across) + 0.5) * side];
-        const [text, power] = side < ONE_LINE ? number(value, 3).split(' × ') : [number(value, 3).replace(' × ', '×')];
+        const [text, power] = side < ONE_LINE ? number(value, 3).split(times) : [number(value, 3).replace(times, tight)];
         const k = 3 * step(shade(value, tone));
         context.fillStyle = colours[k] + 2 * colours[k + 1] + colours[k + 2] > 460 ? '#08090c' : '#f4f2ec';
         if (!power) return context.fillText(text, cx, cy);
         context.fillText(text, cx, cy - 0.55 * size);
-        context.fillText(`×${power}`, cx, cy + 0.6 * size);
+        context.fillText(tight + power, cx, cy + 0.6 * size);
       });
     }
     context.globalAlpha = 1;

@@ -41,6 +41,7 @@ export function keyboard(frame) {
     u: () => frame.scale.turn(),
     c: () => frame.copyReading(),
     k: () => frame.linking.copy(),
+    d: () => frame.looks.turn(),
     '?': () => frame.showKeys(),
     Escape: () => frame.putAway(),
   };

@@ -7,7 +7,7 @@ import { GROUND, ramp, STEPS } from './ramps.js';
 /** @typedef {{lo: number, hi: number, curve: string, ramp: string}} Tone dark and bright ends in the sheet's unit */
 /** @typedef {import('./coding.js').Coding} Coding */
 
-/** The curves that a coding can carry; signed values have no logarithm. @param {Coding} c */
+/** The curves that a coding can carry; signed values have no logarithm. @param {Coding} c @returns {('log'|'asinh'|'linear')[]} */
 export function curves(c) {
   return c.coding === 'log' ? ['log', 'asinh', 'linear'] : ['linear', 'asinh'];
 }

@@ -188,7 +188,7 @@ export class Markers {
       const text = typeof value === 'number' ? number(value, 5) : value === null ? '–' : String(value);
       list.append(make('dt', {}, name.replaceAll('_', ' ')), make('dd', {}, [text, unit(of)].filter(Boolean).join(' ')));
     }
-    const word = (/** @type {string} */ key, /** @type {() => void} */ click) => make('button.word.act', { type: 'button', click }, say(key));
+    const word = (/** @type {'object_go'|'object_close'} */ key, /** @type {() => void} */ click) => make('button.word.act', { type: 'button', click }, say(key));
     note.append(
       make('h2', {}, /^\D/.test(Markers.name(chosen)) ? Markers.name(chosen) : say('object', { id: Markers.name(chosen) })),
       list,

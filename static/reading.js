@@ -50,7 +50,7 @@ export class Reading {
     else if (Number.isNaN(value)) this.show(say('reading_none'));
     else this.show(number(value), unit(sheet.unit));
     const exact = value === null || Number.isNaN(value) ? '' : `${Number(value.toPrecision(7))} ${sheet.unit}`;
-    this.text = `${exact} at ${where} (${sheet.title || sheet.name}, level ${at?.level ?? '-'})`.trim();
+    this.text = say('reading_copy', { value: exact, where, sheet: sheet.title || sheet.name, level: at?.level ?? '–' }).trim();
     this.value.dataset.value = value === null || Number.isNaN(value) ? '' : String(value);
     this.tell(value);
   }

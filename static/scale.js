@@ -112,7 +112,7 @@ export class ScaleEdge {
       }
     }
     const ends = [['scale_whole', this.top, 1], ['scale_pixel', limits.pixel, -1]];
-    for (const [word, size, side] of /** @type {[string, number, number][]} */ (ends)) {
+    for (const [word, size, side] of /** @type {['scale_whole'|'scale_pixel', number, number][]} */ (ends)) {
       const y = Math.round(this.y(size)) + 0.5;
       marks.push(svg('path', { class: 'rung end', d: `M0 ${y}H${w}` }));
       if (Math.abs(y - thumb) > 14) {

@@ -91,11 +91,11 @@ export class State {
   /**
    * Takes over what a link says; what it leaves out becomes as usual.
    * @param {Linked} link
-   * @returns {[string, Record<string, string>][]} words about what the atlas does not have
+   * @returns {[import('./words.js').Word, Record<string, string>][]} words about what the atlas does not have
    */
   fromLink(link) {
     const { atlas } = this;
-    /** @type {[string, Record<string, string>][]} */
+    /** @type {[import('./words.js').Word, Record<string, string>][]} */
     const trouble = [];
     const epoch = link.epoch ? atlas.epochs.find((e) => e.name === link.epoch) : atlas.epochs[0];
     if (!epoch) trouble.push(['trouble_epoch', { name: link.epoch ?? '' }]);
@@ -106,7 +106,8 @@ export class State {
     const { sheet: shown } = this;
     const tone = { ...this.usualTone(shown) };
     if (link.tone && (shown.coding === 'linear' || link.tone[0] > 0)) [tone.lo, tone.hi] = link.tone;
-    if (link.curve && curves(shown).includes(link.curve)) tone.curve = link.curve;
+    const curve = curves(shown).find((c) => c === link.curve);
+    if (curve) tone.curve = curve;
     if (link.ramp && RAMPS.includes(link.ramp)) tone.ramp = link.ramp;
     else if (link.ramp) trouble.push(['trouble_ramp', { name: link.ramp }]);
     const tones = { ...this.tones };

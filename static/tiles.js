@@ -11,7 +11,7 @@
  * @property {number} bytes @property {number} used @property {number} tries @property {number} retry time in ms
  * @property {Worker} worker
  */
-/** @typedef {{arrived(tile: Tile): void, trouble(kind: string): void, fine(): void, calm(): void, gone(): void}} Listener */
+/** @typedef {{arrived(tile: Tile): void, trouble(kind: 'server'|'missing'|'damaged'): void, fine(): void, calm(): void, gone(): void}} Listener */
 /** @typedef {{layer: Layer, level: number, row: number, column: number}} Place */
 
 const AT_ONCE = 8;
@@ -162,7 +162,7 @@ export class Tiles {
     this.pump();
   }
 
-  /** @param {Tile} tile @param {string} reason */
+  /** @param {Tile} tile @param {'server'|'missing'|'damaged'|'gone'} reason */
   failed(tile, reason) {
     this.loading--;
     tile.state = 'waiting';

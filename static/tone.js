@@ -43,14 +43,14 @@ export class ToneEdge {
     this.curve = words(say('curve'), (curve) => state.setTone({ curve }));
     this.ramps = words(say('ramps'), (name) => state.setTone({ ramp: name }));
     this.ramps.root.classList.add('ramps');
-    const act = (/** @type {string} */ key, /** @type {() => void} */ action) => make('button.word.act', { type: 'button', title: say(`${key}_title`), click: action }, say(key));
+    const act = (/** @type {'tone_auto'|'tone_reset'} */ key, /** @type {() => void} */ action) => make('button.word.act', { type: 'button', title: say(`${key}_title`), click: action }, say(key));
     this.acts = make('div.words', {}, act('tone_auto', () => this.auto()), act('tone_reset', () => this.reset()));
     root.append(this.unit, this.field, this.acts, this.curve.root, this.ramps.root);
     this.field.addEventListener('wheel', (event) => this.wheel(event), { passive: false });
     new ResizeObserver(() => this.draw()).observe(this.field);
   }
 
-  /** @param {string} word @param {'lo'|'hi'} which */
+  /** @param {'tone_bright'|'tone_dark'} word @param {'lo'|'hi'} which */
   end(word, which) {
     const grip = handle(this.field, {
       name: say(word),
@@ -70,10 +70,13 @@ export class ToneEdge {
   /** A number typed for one end. @param {'lo'|'hi'} which @param {string} name */
   type(which, name) {
     const { root } = which === 'hi' ? this.bright : this.dark;
-    typed(root, name, this.state.tone[which], (value) => {
+    // Beside the handle, not in it: a slider holds nothing that can be worked.
+    const field = typed(this.field, name, this.state.tone[which], (value) => {
       if (value !== null && (value > 0 || !this.log)) this.state.setTone({ [which]: value });
       root.focus();
     });
+    field.classList.add(which);
+    field.style.top = `${this.y(this.state.tone[which])}px`;
   }
 
   get log() {
@@ -215,7 +218,7 @@ export class ToneEdge {
       grip.place(0, this.y(tone[which]), { now: tone[which], ...range, text: quantity(tone[which], sheet.unit, 3) });
     }
     this.curve.update(curves(sheet).map((value) => ({ value, text: say(`curve_${value}`) })), tone.curve);
-    this.ramps.update(RAMPS.map((value) => ({ value, text: value, mark: gradient(value, '90deg') })), tone.ramp);
+    this.ramps.update(RAMPS.map((value) => ({ value, text: say(/** @type {import('./words.js').Word} */ (`ramp_${value}`)), mark: gradient(value, '90deg') })), tone.ramp);
   }
 
   /** The ramp as this tone lays it along the axis. @param {import('./lut.js').Tone} tone */

@@ -1,7 +1,7 @@
 // Numbers, units, lengths and angles as people read them. In: plain numbers in the atlas unit or the sheet's unit.
 // Out: short strings with the unit, in the number format of the frame's language.
 
-import { LOCALE } from './words.js';
+import { LOCALE, say } from './words.js';
 
 /** @type {Record<string, string>} */
 const SUPERSCRIPT = { '-': '⁻', 0: '⁰', 1: '¹', 2: '²', 3: '³', 4: '⁴', 5: '⁵', 6: '⁶', 7: '⁷', 8: '⁸', 9: '⁹', '.': '·' };
@@ -31,10 +31,13 @@ export function number(x, digits = 4) {
     let power = Math.floor(Math.log10(size));
     let front = format(x / 10 ** power, { minimumFractionDigits: digits - 1, maximumFractionDigits: digits - 1 });
     if (/^−?10/.test(front)) front = format(x / 10 ** ++power, { minimumFractionDigits: digits - 1, maximumFractionDigits: digits - 1 });
-    return `${front} × 10${raised(power)}`;
+    return `${front}${say('times')}10${raised(power)}`;
   }
   return format(x, { maximumSignificantDigits: digits });
 }
+
+/** A number as it is typed, all digits of it. @param {number} x */
+export const plain = (x) => String(x).replace('.', fixed(0, 1)[1]);
 
 /** A count. @param {number} n */
 export const count = (n) => new Intl.NumberFormat(LOCALE).format(n);

@@ -1,135 +1,189 @@
-// Every word on screen, in one table. Another language is one more table with the same keys; `?lang=` or the browser
-// decides. Values may hold {names} that say() fills in.
+// Every word on screen, in one table: each entry once in every language of LANGUAGES, in that order. A new word is one new
+// entry; a new language one more column. The address (`?lang=de`), what was chosen here before, or the browser decides.
+// Texts may hold {names} that say() fills in.
 
-/** @type {Record<string, Record<string, any>>} */
-const TABLES = {
-  en: {
-    untitled: 'Atlas',
-    map: 'Map. Arrow keys travel, plus and minus zoom, 0 shows the whole volume, question mark lists all keys.',
-    epochs: 'Epochs',
-    epoch: 'z = {z}',
-    age: '{age} Gyr',
+import { keep, recall } from './kept.js';
 
-    sheets: 'Sheets',
-    sheet_key: 'key {n}',
+/** @typedef {keyof typeof WORDS} Word */
+/** @typedef {[en: string, de: string]} Told */
 
-    tone: 'Tone',
-    tone_dark: 'Dark end',
-    tone_bright: 'Bright end',
-    tone_auto: 'auto',
-    tone_auto_title: 'Set both ends from the values in view (a)',
-    tone_reset: 'reset',
-    tone_reset_title: 'The ends of the whole volume (shift a)',
-    curve: 'Curve',
-    curve_log: 'log',
-    curve_linear: 'linear',
-    curve_asinh: 'asinh',
-    ramps: 'Colour ramp',
+export const LANGUAGES = ['en', 'de'];
 
-    depth: 'Depth',
-    depth_near: 'Near end of the depth window',
-    depth_far: 'Far end of the depth window',
-    depth_slide: 'Depth window',
-    depth_whole: 'whole depth',
-    depth_whole_title: 'Open the window over all slabs (\\)',
-    depth_reading: '{axis} {a} – {b} {unit}',
-    depth_all: 'all {axis}',
-    depth_share: '{share} % of it all',
+const WORDS = /** @satisfies {Record<string, Told>} */ ({
+  language: ['English', 'Deutsch'],
+  language_title: ['The frame in English', 'Der Rahmen auf Deutsch'],
+  light: ['light room', 'heller Raum'],
+  light_title: ['Light around the map (d)', 'Die Umgebung der Karte hell (d)'],
+  dark: ['dark room', 'dunkler Raum'],
+  dark_title: ['Dark around the map (d)', 'Die Umgebung der Karte dunkel (d)'],
 
-    scale: 'Scale',
-    scale_thumb: 'Width in view',
-    scale_text: '{length} across',
-    scale_whole: 'whole',
-    scale_pixel: 'pixel',
-    comoving: 'comoving',
-    proper: 'proper',
-    angle: 'angle',
+  untitled: ['Atlas', 'Atlas'],
+  map: [
+    'Map. Arrow keys travel, plus and minus zoom, 0 shows the whole volume, question mark lists all keys.',
+    'Karte. Pfeiltasten reisen, Plus und Minus ändern die Weite, 0 zeigt das ganze Volumen, Fragezeichen nennt alle Tasten.',
+  ],
+  epochs: ['Epochs', 'Epochen'],
+  epoch: ['z = {z}', 'z = {z}'],
+  age: ['{age} Gyr', '{age} Mrd. Jahre'],
+  times: [' × ', ' · '],
 
-    census: 'Census',
-    census_low: 'Fewest: lower end of the brush on {column}',
-    census_high: 'Upper end of the brush on {column}',
-    census_count: '{n} in view',
-    census_brushed: '{n} in view, {column} {a} to {b}',
-    census_all: 'all objects',
-    census_all_title: 'Take the brush away',
-    census_none: 'no catalogue',
+  sheets: ['Sheets', 'Blätter'],
+  sheet_key: ['key {n}', 'Taste {n}'],
 
-    reading_none: 'nothing here',
-    reading_outside: 'outside the volume',
-    reading_wait: '…',
-    copied_value: 'Reading copied',
+  tone: ['Tone', 'Tonwerte'],
+  tone_dark: ['Dark end', 'Dunkles Ende'],
+  tone_bright: ['Bright end', 'Helles Ende'],
+  tone_auto: ['auto', 'von selbst'],
+  tone_auto_title: ['Set both ends from the values in view (a)', 'Beide Enden aus den sichtbaren Werten (a)'],
+  tone_reset: ['reset', 'zurück'],
+  tone_reset_title: ['The ends of the whole volume (shift a)', 'Die Enden des ganzen Volumens (Umschalt a)'],
+  curve: ['Curve', 'Kurve'],
+  curve_log: ['log', 'log'],
+  curve_linear: ['linear', 'linear'],
+  curve_asinh: ['asinh', 'arsinh'],
+  ramps: ['Colour ramp', 'Farbverlauf'],
+  ramp_strandline: ['strandline', 'Spülsaum'],
+  ramp_kelpfire: ['kelpfire', 'Tangfeuer'],
+  ramp_starwort: ['starwort', 'Sternmiere'],
+  ramp_undertow: ['undertow', 'Sogstrom'],
+  ramp_lichen: ['lichen', 'Flechte'],
+  ramp_heather: ['heather', 'Heide'],
+  ramp_shingle: ['shingle', 'Kiesel'],
 
-    object: 'Object {id}',
-    object_close: 'close',
-    object_go: 'go there',
-    object_row: 'row {n}',
+  depth: ['Depth', 'Tiefe'],
+  depth_near: ['Near end of the depth window', 'Nahes Ende des Tiefenfensters'],
+  depth_far: ['Far end of the depth window', 'Fernes Ende des Tiefenfensters'],
+  depth_slide: ['Depth window', 'Tiefenfenster'],
+  depth_whole: ['whole depth', 'ganze Tiefe'],
+  depth_whole_title: ['Open the window over all slabs (\\)', 'Das Fenster über alle Scheiben öffnen (\\)'],
+  depth_reading: ['{axis} {a} – {b} {unit}', '{axis} {a} – {b} {unit}'],
+  depth_share: ['{share} % of it all', '{share} % von allem'],
 
-    link_copy: 'copy link',
-    link_copied: 'link copied',
-    link_shown: 'The link is in the address line',
-    keys: 'keys',
-    keys_close: 'close',
-    key_list: [
-      ['arrows', 'travel; with shift, further'],
-      ['+ −', 'closer, wider'],
-      ['0', 'the whole volume'],
-      ['1 … 9', 'choose a sheet'],
-      ['a', 'tone from what is in view'],
-      ['shift a', 'tone of the whole volume'],
-      ['l', 'next curve'],
-      ['r', 'next colour ramp'],
-      ['[ ]', 'slide the depth window'],
-      ['{ }', 'close, open the depth window'],
-      ['\\', 'whole depth'],
-      ['n p', 'next, previous object, heaviest first'],
-      ['g', 'go to the chosen object'],
-      ['m', 'markers on or off'],
-      ['u', 'comoving, proper, angle'],
-      ['c', 'copy the reading'],
-      ['k', 'copy the link'],
-      ['?', 'this list'],
-      ['esc', 'put away'],
-    ],
+  scale: ['Scale', 'Maßstab'],
+  scale_thumb: ['Width in view', 'Sichtbare Weite'],
+  scale_text: ['{length} across', '{length} breit'],
+  scale_whole: ['whole', 'alles'],
+  scale_pixel: ['pixel', 'Pixel'],
+  comoving: ['comoving', 'mitbewegt'],
+  proper: ['proper', 'eigentlich'],
+  angle: ['angle', 'Winkel'],
 
-    trouble_server: 'The server does not answer. Asking again.',
-    trouble_back: 'The server answers again.',
-    trouble_damaged: 'A tile is damaged; a coarser one stands in.',
-    trouble_missing: 'A tile is missing; a coarser one stands in.',
-    trouble_rebuilt: 'The atlas was built anew; it has been read again.',
-    trouble_sheet: 'The link asks for a sheet “{name}” that this atlas does not have.',
-    trouble_epoch: 'The link asks for an epoch “{name}” that this atlas does not have.',
-    trouble_ramp: 'The link asks for a colour ramp “{name}” that is not known.',
-    trouble_object: 'The link asks for an object “{name}” that is not in view.',
-    trouble_link: 'The link could not be read at “{part}”.',
-    trouble_atlas: 'The atlas cannot be read: {reason}',
-  },
-};
+  census: ['Census', 'Zählung'],
+  census_low: ['Lower end of the brush on {column}', 'Unteres Ende der Auswahl nach {column}'],
+  census_high: ['Upper end of the brush on {column}', 'Oberes Ende der Auswahl nach {column}'],
+  census_count: ['{n} in view', '{n} in Sicht'],
+  census_all: ['all objects', 'alle Objekte'],
+  census_all_title: ['Take the brush away', 'Die Auswahl aufheben'],
+  census_none: ['no catalogue', 'kein Katalog'],
 
-function choose() {
+  reading_none: ['nothing here', 'hier ist nichts'],
+  reading_outside: ['outside the volume', 'außerhalb des Volumens'],
+  reading_wait: ['…', '…'],
+  reading_copy: ['{value} at {where} ({sheet}, level {level})', '{value} bei {where} ({sheet}, Stufe {level})'],
+  copied_value: ['Reading copied', 'Wert kopiert'],
+
+  object: ['Object {id}', 'Objekt {id}'],
+  object_close: ['close', 'schließen'],
+  object_go: ['go there', 'hingehen'],
+
+  link_copy: ['copy link', 'Link kopieren'],
+  link_copied: ['link copied', 'Link kopiert'],
+  link_shown: ['The link is in the address line', 'Der Link steht in der Adresszeile'],
+  keys: ['keys', 'Tasten'],
+  keys_close: ['close', 'schließen'],
+  key_arrows: ['arrows', 'Pfeile'],
+  key_shift: ['shift', 'Umschalt'],
+  key_esc: ['esc', 'Esc'],
+
+  trouble_server: ['The server does not answer. Asking again.', 'Der Server antwortet nicht. Wird wieder gefragt.'],
+  trouble_back: ['The server answers again.', 'Der Server antwortet wieder.'],
+  trouble_damaged: ['A tile is damaged; a coarser one stands in.', 'Eine Kachel ist beschädigt; eine gröbere vertritt sie.'],
+  trouble_missing: ['A tile is missing; a coarser one stands in.', 'Eine Kachel fehlt; eine gröbere vertritt sie.'],
+  trouble_rebuilt: ['The atlas was built anew; it has been read again.', 'Der Atlas wurde neu gebaut und neu gelesen.'],
+  trouble_sheet: [
+    'The link asks for a sheet “{name}” that this atlas does not have.',
+    'Der Link verlangt ein Blatt „{name}“, das dieser Atlas nicht hat.',
+  ],
+  trouble_epoch: [
+    'The link asks for an epoch “{name}” that this atlas does not have.',
+    'Der Link verlangt eine Epoche „{name}“, die dieser Atlas nicht hat.',
+  ],
+  trouble_ramp: [
+    'The link asks for a colour ramp “{name}” that is not known.',
+    'Der Link verlangt einen Farbverlauf „{name}“, den es nicht gibt.',
+  ],
+  trouble_object: [
+    'The link asks for an object “{name}” that is not in view.',
+    'Der Link verlangt ein Objekt „{name}“, das nicht in Sicht ist.',
+  ],
+  trouble_link: ['The link could not be read at “{part}”.', 'Der Link war bei „{part}“ nicht zu lesen.'],
+  trouble_atlas: ['The atlas cannot be read: {reason}', 'Der Atlas ist nicht zu lesen: {reason}'],
+});
+
+/** Keys and what they do. @type {[keys: string, told: Told][]} */
+const KEYS = [
+  ['arrows', ['travel; with shift, further', 'reisen; mit Umschalt weiter']],
+  ['+ −', ['closer, wider', 'näher, weiter']],
+  ['0', ['the whole volume', 'das ganze Volumen']],
+  ['1 … 9', ['choose a sheet', 'ein Blatt wählen']],
+  ['a', ['tone from what is in view', 'Tonwerte aus dem, was zu sehen ist']],
+  ['shift a', ['tone of the whole volume', 'Tonwerte des ganzen Volumens']],
+  ['l', ['next curve', 'nächste Kurve']],
+  ['r', ['next colour ramp', 'nächster Farbverlauf']],
+  ['[ ]', ['slide the depth window', 'das Tiefenfenster schieben']],
+  ['{ }', ['close, open the depth window', 'das Tiefenfenster schließen, öffnen']],
+  ['\\', ['whole depth', 'ganze Tiefe']],
+  ['n p', ['next, previous object, heaviest first', 'nächstes, voriges Objekt, das schwerste zuerst']],
+  ['g', ['go to the chosen object', 'zum gewählten Objekt']],
+  ['m', ['markers on or off', 'Ringe an oder aus']],
+  ['u', ['comoving, proper, angle', 'mitbewegt, eigentlich, Winkel']],
+  ['c', ['copy the reading', 'den Wert kopieren']],
+  ['k', ['copy the link', 'den Link kopieren']],
+  ['d', ['dark or light around the map', 'Umgebung der Karte dunkel oder hell']],
+  ['?', ['this list', 'diese Liste']],
+  ['esc', ['put away', 'weglegen']],
+];
+
+function wanted() {
   const asked = new URLSearchParams(location.search).get('lang');
-  for (const tag of [asked, ...(navigator.languages ?? [])]) {
+  for (const tag of [asked, recall('language'), ...navigator.languages]) {
     const short = tag?.slice(0, 2).toLowerCase();
-    if (short && short in TABLES) return short;
+    if (short && LANGUAGES.includes(short)) return short;
   }
-  return 'en';
+  return LANGUAGES[0];
 }
 
-const language = typeof location === 'undefined' ? 'en' : choose();
-const table = TABLES[language];
+/** The language of the words, and of the number format that goes with them. */
+export const LOCALE = wanted();
+const column = LANGUAGES.indexOf(LOCALE);
 
-/** The number format that goes with the words. */
-export const LOCALE = language;
+/** Says everything in another language from now on. The link says what is shown, so the page just begins again. @param {string} language */
+export function speak(language) {
+  keep('language', language);
+  const address = new URL(location.href);
+  address.searchParams.delete('lang');
+  if (address.href === location.href) location.reload();
+  else location.replace(address);
+}
+
+/** The other languages: how each names itself. @returns {{language: string, name: string, title: string}[]} */
+export const others = () =>
+  LANGUAGES.map((language, i) => ({ language, name: WORDS.language[i], title: WORDS.language_title[i] })).filter((_, i) => i !== column);
 
 /**
- * @param {string} key
+ * @param {Word} key
  * @param {Record<string, string|number>} [fill]
  * @returns {string}
  */
 export function say(key, fill = {}) {
-  /** @type {string|undefined} */ const text = table[key];
-  if (text === undefined) throw new RangeError(`words: no entry ${key}`);
-  return text.replace(/\{(\w+)\}/g, (/** @type {string} */ whole, /** @type {string} */ name) => (name in fill ? String(fill[name]) : whole));
+  const told = WORDS[key];
+  if (!told) throw new RangeError(`words: no entry ${key}`);
+  return told[column].replace(/\{(\w+)\}/g, (whole, name) => (name in fill ? String(fill[name]) : whole));
 }
 
 /** The keys and what they do. @returns {[string, string][]} */
-export const keyList = () => /** @type {[string, string][]} */ (table.key_list);
+export const keyList = () =>
+  KEYS.map(([keys, told]) => [
+    keys.replace(/arrows|shift|esc/, (name) => say(/** @type {Word} */ (`key_${name}`))),
+    told[column],
+  ]);

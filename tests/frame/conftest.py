@@ -8,7 +8,7 @@ from astropy.table import Table
 from atlas_maker import SheetData, make_atlas, write_atlas
 from live import Live
 from playwright.sync_api import sync_playwright
-from screen import Screen
+from screen import Screen, how
 
 import tilemap
 from tilemap.buildfile import Catalogue
@@ -93,16 +93,6 @@ def contexts(browser):
     return context
 
 
-def how(width=1100, height=760, ratio=1, touch=False, motion=False):
-    return {
-        "viewport": {"width": width, "height": height},
-        "device_scale_factor": ratio,
-        "has_touch": touch,
-        "is_mobile": touch,
-        "reduced_motion": "no-preference" if motion else "reduce",
-    }
-
-
 @pytest.fixture(scope="session")
 def standing(contexts, live):
     screen = Screen(contexts(**how()).new_page(), f"{live.address}/field/")
@@ -122,7 +112,7 @@ def screen(standing, live):
 @pytest.fixture
 def open_screen(contexts, browser, live):
     """Opens a page: ``open_screen(fragment, width=..., height=..., ratio=..., touch=..., motion=..., atlas=..., address=...,
-    fresh=..., settle=...)``; `fresh` is a browser that has seen nothing yet.
+    fresh=..., settle=..., locale=...)``; `fresh` is a browser that has seen nothing yet.
     """
     closing = []
 
@@ -137,8 +127,9 @@ def open_screen(contexts, browser, live):
         address=None,
         fresh=False,
         settle=True,
+        locale="en-GB",
     ):
-        settings = how(width, height, ratio, touch, motion)
+        settings = how(width, height, ratio, touch, motion, locale)
         context = browser.new_context(**settings) if fresh else contexts(**settings)
         page = context.new_page()
         closing.append(context if fresh else page)

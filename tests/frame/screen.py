@@ -29,6 +29,18 @@ AT_REST = """timeout => new Promise((done) => {
 })"""
 
 
+def how(width=1100, height=760, ratio=1, touch=False, motion=False, locale="en-GB"):
+    """Settings of a browser context."""
+    return {
+        "viewport": {"width": width, "height": height},
+        "device_scale_factor": ratio,
+        "has_touch": touch,
+        "is_mobile": touch,
+        "locale": locale,
+        "reduced_motion": "no-preference" if motion else "reduce",
+    }
+
+
 class Screen:
     def __init__(self, page: Page, address: str) -> None:
         self.page = page

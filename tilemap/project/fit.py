@@ -12,6 +12,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from functools import cache
 from pathlib import Path
 
 import numpy as np
@@ -22,20 +23,23 @@ from scipy.optimize import minimize
 
 from tilemap.project.kernels import KERNELS, Kernel
 from tilemap.project.stamp_numbers import Numbers
-from tilemap.project.stamps import COARSE_PX, RANK, TERMS
+from tilemap.project.stamps import COARSE_PX, RANK, SMALL_PX, SMALL_TERMS, TERMS
 
 Array = NDArray[np.float64]
 
-# Half width of stamps in units of the support radius, and the square pixels by which coarse ones are narrower. Found
-# by trying: a little less than the support wastes no pixels and no polynomial on the rim, where less than 6e-5 of the mass lies.
+# Half width of stamps in units of the support radius, the square pixels by which coarse ones are narrower, and the half
+# width of small ones. Found by trying: a little less than the support wastes no pixels and no polynomial on the rim, where
+# less than 6e-5 of the mass lies (1e-4 for small ones).
 CHOSEN = {
-    "cubic": (0.90, 5.75),
-    "quartic": (0.90, 7.25),
-    "quintic": (0.88, 9.0),
-    "wendland-c2": (0.90, 6.5),
-    "wendland-c4": (0.85, 9.0),
-    "wendland-c6": (0.82, 10.5),
+    "cubic": (0.90, 5.75, 0.87),
+    "quartic": (0.90, 7.25, 0.85),
+    "quintic": (0.88, 9.0, 0.81),
+    "wendland-c2": (0.90, 6.5, 0.85),
+    "wendland-c4": (0.85, 9.0, 0.79),
+    "wendland-c6": (0.82, 10.5, 0.75),
 }
+SMALL_SHARES = (1.0, 0.7, 0.5)
+"""Small stamps are fitted at half widths of so many times SMALL_PX."""
 ORDERS = 3
 """Polynomials of coarse stamps are quadratic in 1 / width^2."""
 RADII = tuple(COARSE_PX * factor for factor in (1.0, 1.1, 1.27, 1.53, 2.0, 3.5))
@@ -44,31 +48,34 @@ ROUNDS = ((5.0, 1e-2), (20.0, 1e-3), (60.0, 1e-4), (200.0, 2e-5), (600.0, 5e-6),
 _QUARTIC = BSpline.basis_element(np.arange(6) - 2.5, extrapolate=False)
 
 
-def _basis(x: Array) -> Array:
-    """The terms that a_k is made of, at x from -1 to 1 (n,): even, zero at 1, along a new axis."""
-    return (1.0 - x**2)[:, None] * legendre.legvander(2.0 * x**2 - 1.0, TERMS - 2)
+def _basis(x: Array, terms: int) -> Array:
+    """The parts that a_k is made of, at x from -1 to 1 (n,): even, zero at 1, along a new axis of terms - 1."""
+    return (1.0 - x**2)[:, None] * legendre.legvander(2.0 * x**2 - 1.0, terms - 2)
 
 
-def _integrals() -> Array:
-    """Coefficients in v = 2 x^2 - 1 of the terms' integrals from zero, divided by x: (TERMS - 1, TERMS)."""
-    rows = np.zeros((TERMS - 1, TERMS))
-    for n in range(TERMS - 1):
-        in_v = polynomial.polymul([0.5, -0.5], legendre.leg2poly(np.eye(TERMS - 1)[n]))
-        in_square = np.zeros(TERMS)
+@cache
+def _integrals(terms: int) -> Array:
+    """Coefficients in v = 2 x^2 - 1 of the parts' integrals from zero, divided by x: (terms - 1, terms)."""
+    rows = np.zeros((terms - 1, terms))
+    for n in range(terms - 1):
+        in_v = polynomial.polymul([0.5, -0.5], legendre.leg2poly(np.eye(terms - 1)[n]))
+        in_square = np.zeros(terms)
         for k, factor in enumerate(in_v):
             in_square[: k + 1] += factor * polynomial.polypow([-1.0, 2.0], k)
-        for k, factor in enumerate(in_square / (2 * np.arange(TERMS) + 1)):
+        for k, factor in enumerate(in_square / (2 * np.arange(terms) + 1)):
             rows[n, : k + 1] += factor * polynomial.polypow([0.5, 0.5], k)
     return rows
 
 
-INTEGRALS = _integrals()
-
-
-def _shares(edges: Array) -> Array:
-    """What lies between edges (n + 1,), in units of the half width, for each term: (n, TERMS - 1)."""
+def _shares(edges: Array, terms: int) -> Array:
+    """What lies between edges (n + 1,), in units of the half width, for each part: (n, terms - 1)."""
     x = np.clip(edges, -1.0, 1.0)
-    return np.diff(x[:, None] * polynomial.polyvander(2.0 * x**2 - 1.0, TERMS - 1) @ INTEGRALS.T, axis=0)
+    return np.diff(x[:, None] * polynomial.polyvander(2.0 * x**2 - 1.0, terms - 1) @ _integrals(terms).T, axis=0)
+
+
+def _sums(parts: Array) -> Array:
+    """All that products made of these parts (terms - 1, RANK) hold, for each product."""
+    return 2.0 * _integrals(len(parts) + 1).sum(axis=1) @ parts
 
 
 @dataclass
@@ -85,35 +92,34 @@ class Target:
     cover_weights: Array
     peak: float
 
-    def loss(self, terms: Array, signs: Array, steep: float, soft: float) -> tuple[float, Array]:
-        """Rounded L1 difference, with what is negative `steep` times; and its derivative by terms (TERMS - 1, RANK)."""
+    def loss(self, parts: Array, signs: Array, steep: float, soft: float) -> tuple[float, Array]:
+        """Rounded L1 difference, with what is negative `steep` times; and its derivative by parts (terms - 1, RANK)."""
         soft *= self.peak
-        total, slope = 0.0, np.zeros_like(terms)
-        values = [part @ terms for part in self.maps]
+        total, slope = 0.0, np.zeros_like(parts)
+        values = [at @ parts for at in self.maps]
         for i, j, wanted, weights in self.wanted:
             off = (values[i] * signs) @ values[j].T - wanted
             size = np.sqrt(off**2 + soft**2)
             total += float((weights * (size - soft)).sum())
             push = weights * off / size
             slope += self.maps[i].T @ (push @ (values[j] * signs)) + self.maps[j].T @ (push.T @ (values[i] * signs))
-        cover = self.cover @ terms
+        cover = self.cover @ parts
         below = np.minimum((cover * signs) @ cover.T, 0.0)
         size = np.sqrt(below**2 + soft**2)
         total += steep * float((self.cover_weights * (size - soft)).sum())
         slope += 2.0 * steep * self.cover.T @ ((self.cover_weights * below / size) @ (cover * signs))
-        ends = 2.0 * INTEGRALS.sum(axis=1)
-        sums = ends @ terms
+        ends, sums = 2.0 * _integrals(len(parts) + 1).sum(axis=1), _sums(parts)
         excess = float((signs * sums**2).sum()) - 1.0
         return total + 1e3 * excess**2, slope + 4e3 * excess * np.outer(ends, signs * sums)
 
 
-def plain_target(kernel: Kernel, reach: float, points: int = 40) -> Target:
+def plain_target(kernel: Kernel, reach: float, terms: int = TERMS, points: int = 40) -> Target:
     """The kernel itself, without pixels, in units of the half width."""
     gauss_x, gauss_w = legendre.leggauss(points)
     x = 0.5 * (gauss_x + 1.0)
     weights = np.multiply.outer(gauss_w, gauss_w)
     values = kernel.projected(reach * np.hypot(x[:, None], x)) * reach**2
-    at = _basis(x)
+    at = _basis(x, terms)
     return Target([at], [(0, 0, values, weights)], at, weights, float(values.max()))
 
 
@@ -128,7 +134,7 @@ def spline_target(
     carry = np.nan_to_num(_QUARTIC(fine[:, None] - cells))
     edges = np.append(cells, margin + 1) - 0.5
     places = np.linspace(0.0, 0.5, offsets)
-    maps = [carry @ _shares((edges - place) / width) for place in places]
+    maps = [carry @ _shares((edges - place) / width, TERMS) for place in places]
     pairs = [(i, j) for i in range(offsets) for j in range(i, offsets)]
     wanted = []
     for i, j in pairs:
@@ -136,10 +142,29 @@ def spline_target(
         wanted.append((i, j, values, np.full(values.shape, 1.0 / (len(pairs) * cuts**2))))
     per_pixel = 8
     x = (np.arange(math.ceil((width + 0.5) * per_pixel)) + 0.25) / per_pixel
-    cover = np.concatenate([_shares(np.array([(at - 0.5) / width, (at + 0.5) / width])) for at in x])
+    cover = np.concatenate([_shares(np.array([at - 0.5, at + 0.5]) / width, TERMS) for at in x])
     return Target(
         maps, wanted, cover, np.full((len(x), len(x)), 4.0 / per_pixel**2), float(kernel.projected(0.0)) / radius**2
     )
+
+
+def small_target(kernel: Kernel, reach: float, width: float, offsets: int = 4, cuts: int = 24) -> Target:
+    """The kernel averaged over pixels, of the radius whose stamp has this half width, for places as in `spline_target`."""
+    radius = width / reach
+    margin = math.ceil(radius + 1)
+    cells = np.arange(-margin, margin + 1)
+    fine = (np.arange(len(cells) * cuts) + 0.5) / cuts - margin - 0.5
+    places = np.linspace(0.0, 0.5, offsets)
+    maps = [_shares((np.append(cells, margin + 1) - 0.5 - place) / width, SMALL_TERMS) for place in places]
+    pairs = [(i, j) for i in range(offsets) for j in range(i, offsets)]
+    wanted = []
+    for i, j in pairs:
+        values = kernel.projected(np.hypot(fine[:, None] - places[i], fine - places[j]) / radius)
+        values = values.reshape(len(cells), cuts, len(cells), cuts).sum(axis=(1, 3))
+        wanted.append((i, j, values / values.sum(), np.full(values.shape, 1.0 / len(pairs))))
+    x = (np.arange(64) + 0.5) / 64
+    peak = float(kernel.projected(0.0)) / radius**2
+    return Target(maps, wanted, _basis(x, SMALL_TERMS), np.full((64, 64), 1.0 / 64**2), peak)
 
 
 def half_width(reach: float, squeeze: float, radius: float) -> float:
@@ -162,28 +187,35 @@ def _minimise(loss, start: Array, most: int) -> Array:
 
 
 def fit_plain(target: Target) -> tuple[Array, Array]:
-    """Terms (TERMS - 1, RANK) and signs of the products that are the kernel."""
-    root = np.sqrt(np.diag(target.wanted[0][3]))
-    orthonormal, upper = np.linalg.qr(target.maps[0] * root[:, None])
+    """Parts (terms - 1, RANK) and signs of the products that are the kernel."""
+    orthonormal, upper, root = _orthonormal(target)
     matrix = orthonormal.T @ (target.wanted[0][2] * np.multiply.outer(root, root)) @ orthonormal
     values, vectors = np.linalg.eigh(matrix)
     chosen = np.argsort(-np.abs(values))[:RANK]
     signs = np.sign(values[chosen])
-    start = vectors[:, chosen] * np.sqrt(np.abs(values[chosen]))
-    # In the orthonormal terms the minimum is found in a hundred steps; in the others it is not.
+    return _refine([target], upper, vectors[:, chosen] * np.sqrt(np.abs(values[chosen])), signs), signs
+
+
+def _orthonormal(target: Target) -> tuple[Array, Array, Array]:
+    """Of a plain target: its parts made orthonormal, the matrix that takes parts there, and the roots of weights."""
+    root = np.sqrt(np.diag(target.wanted[0][3]))
+    return *np.linalg.qr(target.maps[0] * root[:, None]), root
+
+
+def _refine(targets: list[Target], upper: Array, start: Array, signs: Array) -> Array:
+    """Parts closest to all targets, holding one in sum. In orthonormal parts the minimum is found in a hundred steps."""
     change = np.linalg.inv(upper)
 
-    def loss(terms: Array, steep: float, soft: float) -> tuple[float, Array]:
-        value, slope = target.loss(change @ terms, signs, steep, soft)
-        return value, change.T @ slope
+    def loss(parts: Array, steep: float, soft: float) -> tuple[float, Array]:
+        found = [target.loss(change @ parts, signs, steep, soft) for target in targets]
+        return sum(value for value, _ in found), change.T @ sum(slope for _, slope in found)
 
-    terms = change @ _minimise(loss, start, 1500)
-    sums = 2.0 * INTEGRALS.sum(axis=1) @ terms
-    return terms / np.sqrt((signs * sums**2).sum()), signs
+    parts = change @ _minimise(loss, start, 1500)
+    return parts / np.sqrt((signs * _sums(parts) ** 2).sum())
 
 
-def fit_kernel(kernel: Kernel, reach: float, squeeze: float) -> Numbers:
-    """The numbers of a kernel: its products as they are, and what makes splines of them at the widths of coarse images."""
+def fit_kernel(kernel: Kernel, reach: float, squeeze: float, small_reach: float) -> Numbers:
+    """The numbers of a kernel: its products as they are, what makes splines of them at the widths of coarse images, and small ones."""
     plain, signs = fit_plain(plain_target(kernel, reach))
     targets = [spline_target(kernel, reach, squeeze, radius) for radius in RADII]
     unit = half_width(reach, squeeze, COARSE_PX) ** 2
@@ -192,15 +224,40 @@ def fit_kernel(kernel: Kernel, reach: float, squeeze: float) -> Numbers:
     def loss(changes: Array, steep: float, soft: float) -> tuple[float, Array]:
         total, slope = 0.0, np.zeros_like(changes)
         for target, power in zip(targets, powers, strict=True):
-            value, by_terms = target.loss(plain + np.tensordot(power, changes, axes=1), signs, steep, soft)
+            value, by_parts = target.loss(plain + np.tensordot(power, changes, axes=1), signs, steep, soft)
             total += value
-            slope += np.multiply.outer(power, by_terms)
+            slope += np.multiply.outer(power, by_parts)
         return total, slope
 
     changes = _minimise(loss, np.zeros((ORDERS - 1, *plain.shape)), 400)
     orders = [plain, *(change * unit ** (k + 1) for k, change in enumerate(changes))]
-    numbers = np.concatenate([(terms.T @ INTEGRALS).ravel() for terms in orders])
-    return Numbers(reach, squeeze, tuple(int(sign) for sign in signs), tuple(float(f"{x:.8g}") for x in numbers))
+    small, small_signs = fit_small(kernel, small_reach)
+    return Numbers(
+        reach,
+        squeeze,
+        _whole(signs),
+        _rounded(np.concatenate([(parts.T @ _integrals(TERMS)).ravel() for parts in orders])),
+        small_reach,
+        _whole(small_signs),
+        _rounded((small.T @ _integrals(SMALL_TERMS)).ravel()),
+    )
+
+
+def fit_small(kernel: Kernel, reach: float) -> tuple[Array, Array]:
+    """Parts and signs of small stamps."""
+    start = plain_target(kernel, reach, SMALL_TERMS)
+    parts, signs = fit_plain(start)
+    upper = _orthonormal(start)[1]
+    targets = [small_target(kernel, reach, share * SMALL_PX) for share in SMALL_SHARES]
+    return _refine(targets, upper, upper @ parts, signs), signs
+
+
+def _whole(signs: Array) -> tuple[int, ...]:
+    return tuple(int(sign) for sign in signs)
+
+
+def _rounded(numbers: Array) -> tuple[float, ...]:
+    return tuple(float(f"{x:.8g}") for x in numbers)
 
 
 HEAD = '''"""The polynomials of stamps, written by `python -m tilemap.project.fit`; what they mean is said in `stamps`."""
@@ -211,12 +268,16 @@ from typing import NamedTuple
 
 
 class Numbers(NamedTuple):
-    """Of one kernel: half width, narrowing, signs; coefficients (order of 1 / width^2, product, power of v) in one row."""
+    """Of one kernel: half width, narrowing, signs, and coefficients in one row (order of 1 / width^2, product, power of v);
+    half width, signs and coefficients (product, power of v) of small stamps."""
 
     reach: float
     squeeze: float
     signs: tuple[int, ...]
     orders: tuple[float, ...]
+    small_reach: float
+    small_signs: tuple[int, ...]
+    small: tuple[float, ...]
 
 
 # fmt: off
@@ -224,16 +285,20 @@ NUMBERS: dict[str, Numbers] = {
 '''
 
 
+def _lines(numbers: tuple[float, ...], terms: int) -> str:
+    rows = (numbers[start : start + terms] for start in range(0, len(numbers), terms))
+    return "".join(f"        {', '.join(f'{x:.8g}' for x in row)},\n" for row in rows)
+
+
 def write(path: Path) -> None:
     """Fit every kernel and write the module of their numbers."""
-    lines = [HEAD]
-    for name, (reach, squeeze) in CHOSEN.items():
-        numbers = fit_kernel(KERNELS[name], reach, squeeze)
-        lines.append(f'    "{name}": Numbers({reach}, {squeeze}, {numbers.signs}, (\n')
-        for start in range(0, len(numbers.orders), TERMS):
-            lines.append(f"        {', '.join(f'{x:.8g}' for x in numbers.orders[start : start + TERMS])},\n")
-        lines.append("    )),\n")
-    path.write_text("".join([*lines, "}\n"]), encoding="utf-8")
+    text = HEAD
+    for name, chosen in CHOSEN.items():
+        numbers = fit_kernel(KERNELS[name], *chosen)
+        text += f'    "{name}": Numbers({numbers.reach}, {numbers.squeeze}, {numbers.signs}, (\n'
+        text += _lines(numbers.orders, TERMS) + f"    ), {numbers.small_reach}, {numbers.small_signs}, (\n"
+        text += _lines(numbers.small, SMALL_TERMS) + "    )),\n"
+    path.write_text(text + "}\n", encoding="utf-8")
 
 
 if __name__ == "__main__":

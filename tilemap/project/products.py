@@ -1,7 +1,7 @@
 """Stamps as products of rows and columns: some particles in, their weights on pixels added to flat images.
 
 The rows and columns of a particle's products (see `stamps`) are computed sixteen pixel edges at a time; a stamp is added
-line by line, a line being one or two vectors of sixteen pixels whatever the kernel covers.
+line by line, a line being half a vector of sixteen pixels, one or two, whatever the kernel covers.
 """
 
 from __future__ import annotations
@@ -13,21 +13,33 @@ import numpy as np
 from numba import njit
 
 from tilemap.project.lanes import (
-    add_lower,
+    add_product,
     fma,
     follow,
+    follow_each,
     halves,
     least,
-    load,
+    lower,
     minus,
     most,
     ramp,
     spread,
+    spread_like,
     store,
     times,
     turn,
 )
-from tilemap.project.stamps import ENDS, LARGE_PX, NODES, RANK, SIGNS, TERMS
+from tilemap.project.stamps import (
+    ENDS,
+    LARGE_PX,
+    NODES,
+    RANK,
+    SIGNS,
+    SMALL_ENDS,
+    SMALL_SIGNS,
+    SMALL_TERMS,
+    TERMS,
+)
 
 MARGIN = 48
 """Pixels around an image that drawing may touch: twice LARGE_PX, a pad for refinement, and a line's spare width."""
@@ -41,14 +53,15 @@ f32 = np.float32
 _LINE = 32  # room for the column of one product in scratch
 BATCH = 128
 """Particles measured at a time."""
-PACKED_PX = 8
-"""Widest stamp whose edges across and down are computed in one go."""
+TINY_PX = 4
+"""Pixels each way that the smallest stamps touch at most: those of which most fall on one pixel."""
+_TINY, _SMALL, _SINGLE, _SHARED, _DOUBLE, _WIDE = range(6)
 
 
 def _room():
     return (
         np.empty((4, BATCH), dtype=np.int32),
-        np.empty((7, BATCH), dtype=np.float32),
+        np.empty((6, BATCH), dtype=np.float32),
         np.empty(RANK * _LINE, dtype=np.float32),
     )
 
@@ -68,16 +81,15 @@ def _v(x):
 
 
 @njit(inline="always", **FAST)
-def _packed(scratch, table, node, k, x, v):
-    """Product k of a stamp at most 8 pixels wide: x holds the edges across in its lower half, those down in its upper."""
-    a = spread(table[node, k * TERMS + TERMS - 1])
-    for n in range(TERMS - 2, -1, -1):
-        a = fma(a, v, spread(table[node, k * TERMS + n]))
+def _small(scratch, small, k, x, v):
+    """Product k of a small stamp: x holds the left edges of eight pixels across in its lower half, upper ones down in its upper."""
+    a = spread(small[k * SMALL_TERMS + SMALL_TERMS - 1])
+    for n in range(SMALL_TERMS - 2, -1, -1):
+        a = fma(a, v, spread(small[k * SMALL_TERMS + n]))
     a = times(a, x)
-    end = spread(table[node, ENDS + k])
-    down, across = turn(a, end), halves(a, end)
-    store(scratch, k * _LINE, times(minus(follow(down, end), down), spread(table[node, SIGNS + k])))
-    return minus(follow(across, end), across)
+    a = minus(follow_each(a, spread(small[SMALL_ENDS + k])), a)
+    store(scratch, k * _LINE, times(a, spread(small[SMALL_SIGNS + k])))
+    return lower(a)
 
 
 @njit(inline="always", **FAST)
@@ -127,107 +139,147 @@ def _double(scratch, table, node, k, x, v, xx, vv, y, w, yy, ww):
 
 @njit(inline="always", **FAST)
 def _sum(scratch, row, x0, x1, x2, x3):
-    """Sixteen weights of a row of pixels. What rounding and the fit leave below zero (1e-7 of the mass) is cut off."""
-    a = times(spread(scratch[row]), x0)
-    a = fma(spread(scratch[row + _LINE]), x1, a)
-    a = fma(spread(scratch[row + 2 * _LINE]), x2, a)
-    a = fma(spread(scratch[row + 3 * _LINE]), x3, a)
-    return most(a, spread(f32(0.0)))
+    """The weights of a row of pixels. What rounding and the fit leave below zero (1e-7 of the mass) is cut off."""
+    a = times(spread_like(scratch[row], x0), x0)
+    a = fma(spread_like(scratch[row + _LINE], x1), x1, a)
+    a = fma(spread_like(scratch[row + 2 * _LINE], x2), x2, a)
+    a = fma(spread_like(scratch[row + 3 * _LINE], x3), x3, a)
+    return most(a, spread_like(f32(0.0), a))
 
 
 @njit(**FAST)
-def _measure(records, order, scale, corner, value, channels, stride, reach, squeeze, density, places, sizes):
-    """Where the stamps of some particles lie: whole numbers into places, others into sizes.
+def _measure(records, order, scale, corners, value, channels, strides, stamp, room):
+    """Where the stamps of some particles lie: whole numbers into places, others into sizes. Returns the largest half
+    width of all but the wide, and how many are tiny and wide.
 
     Apart from drawing, as the compiler makes vectors of it, and as the lengths of loops over rows are guessed wrong by
     the machine for every second particle, which costs little where the right ones are at hand (a third of all time
     for small kernels).
     """
-    share = scale * scale
+    _, reach, squeeze, density, _, small_reach, small_px = stamp
+    places, sizes, _ = room
+    corner, aside = corners
+    one, share = np.int32(1), scale * scale
+    largest, tinies, wides = f32(0.0), np.int32(0), np.int32(0)
     for i in range(len(order)):
         index = order[i]
+        sizes[0, i], sizes[1, i], sizes[5, i] = records[index, 0], records[index, 1], records[index, 2]
+        sizes[3, i], sizes[4, i] = records[index, 3 + value], records[index, 2 + value + channels]
+    for i in range(len(order)):
         # From the corner of the margin, so that cutting off decimals rounds down.
-        x = records[index, 0] * scale - f32(corner[1] - MARGIN)
-        y = records[index, 1] * scale - f32(corner[0] - MARGIN)
-        r = records[index, 2] * scale
-        half = reach * math.sqrt(r * r - squeeze)
+        x, y = sizes[0, i] * scale - f32(corner[1] - MARGIN), sizes[1, i] * scale - f32(corner[0] - MARGIN)
+        r = sizes[5, i] * scale
+        half = small_reach * r if r <= small_px else reach * math.sqrt(r * r - squeeze)
         inverse = f32(1.0) / half
         left, top = np.int32(x - half), np.int32(y - half)
-        places[0, i] = top * stride + left
-        places[1, i] = np.int32(y + half) - top + 1
-        places[2, i] = np.int32(x + half) - left + 1
-        places[3, i] = min(np.int32(inverse * inverse * density + f32(0.5)), np.int32(NODES - 1))
+        rows, columns = np.int32(y + half) - top + one, np.int32(x + half) - left + one
+        most = max(rows, columns)
+        way = np.int32(_DOUBLE)
+        way = np.int32(_SHARED) if most <= 24 else way
+        way = np.int32(_SINGLE) if most <= 16 else way
+        way = np.int32(_SMALL) if r <= small_px else way
+        way = np.int32(_TINY) if most <= TINY_PX else way
+        way = np.int32(_WIDE) if r > f32(LARGE_PX) else way
+        # There, coordinates begin at another corner, and rows have another length.
+        tiny = (top - np.int32(aside[0] - corner[0])) * strides[1] + left - np.int32(aside[1] - corner[1])
+        places[0, i] = tiny if most <= TINY_PX else top * strides[0] + left
+        places[1, i] = rows
+        places[2, i] = min(np.int32(inverse * inverse * density + f32(0.5)), np.int32(NODES - 1))
+        places[3, i] = way
         sizes[0, i] = f32(left) - x
         sizes[1, i] = f32(top) - y
         sizes[2, i] = inverse
-        sizes[3, i] = records[index, 3 + value] * share
-        sizes[4, i] = records[index, 2 + value + channels] * share
+        sizes[3, i] *= share
+        sizes[4, i] *= share
         sizes[5, i] = r
-        sizes[6, i] = half
+        largest = max(largest, half if r <= f32(LARGE_PX) else f32(0.0))
+        tinies += one if most <= TINY_PX else np.int32(0)
+        wides += one if r > f32(LARGE_PX) else np.int32(0)
+    return largest, tinies, wides
 
 
 @njit(**FAST)
-def draw_some(flat, wide, in_deep, channels, stride, records, order, scale, corner, value, stamp, room):
-    """Draw particles in this order, and return the largest half width of their stamps in pixels.
+def draw_some(flat, tiny, wide, channels, strides, records, order, scale, corners, value, stamp, room):
+    """Draw particles in this order.
 
     Parameters
     ----------
-    flat : two float32 (n,), two float64 (n,)
-        Flat images of the first and the second channel (the same where there is but one); and those that take stamps of
-        at most PACKED_PX where `in_deep`, as more of them fall on one pixel.
+    flat : two float32 (n,)
+        Flat images of the first and the second channel (the same where there is but one).
+    tiny : two float64 or float32 (n,)
+        Those that stamps of at most TINY_PX pixels each way are added to.
     wide : float64 (channels, rows, columns), whole image with its margin, for kernels wider than LARGE_PX
     channels : int, 1 or 2
-    stride : int32, elements from row to row
+    strides : two int32, elements from row to row of flat and of tiny
     records, order, scale : as in `splat.draw`
-    corner : int, int
-        Row and column of the picture at which the images begin, less their margin.
+    corners : two of (int, int)
+        Row and column of the picture at which flat and tiny begin, less their margin.
     value : int, the first channel among those of the records
-    stamp : table, reach, squeeze, density of `Stamps`
+    stamp : table, reach, squeeze, density, and of small stamps table, reach and largest radius
     room : tuple of arrays made by `room_for_drawing`
+
+    Returns
+    -------
+    float32, bool
+        The largest half width of these stamps in pixels; whether some were tiny.
     """
-    pixels, others, deep, deep_others = flat
-    table, reach, squeeze, density = stamp
-    places, sizes, scratch = room
-    largest = f32(0.0)
-    for number in range(len(order)):
-        i = number % BATCH
-        if i == 0:
-            some = order[number : number + BATCH]
-            _measure(records, some, scale, corner, value, channels, stride, reach, squeeze, density, places, sizes)
-        if sizes[5, i] > f32(LARGE_PX):
-            index = order[number]
-            x, y = records[index, 0] * scale + f32(MARGIN), records[index, 1] * scale + f32(MARGIN)
-            draw_wide(wide, channels, x, y, sizes[5, i], sizes[3, i], sizes[4, i], stamp)
+    largest, some_tiny = f32(0.0), False
+    for start in range(0, len(order), BATCH):
+        some = order[start : start + BATCH]
+        reach, tinies, wides = _measure(records, some, scale, corners, value, channels, strides, stamp, room)
+        largest, some_tiny = max(largest, reach), some_tiny or tinies > 0
+        _add(flat, tiny, channels, strides, len(some), stamp, room)
+        if wides == 0:
             continue
-        largest = max(largest, sizes[6, i])
-        at, rows, columns, node = np.int64(places[0, i]), places[1, i], places[2, i], places[3, i]
-        first_x, first_y, inverse = sizes[0, i], sizes[1, i], sizes[2, i]
-        m, n = spread(sizes[3, i]), spread(sizes[4, i])
+        places, sizes, _ = room
+        for i in range(len(some)):
+            if places[3, i] == _WIDE:
+                x, y = records[some[i], 0] * scale + f32(MARGIN), records[some[i], 1] * scale + f32(MARGIN)
+                draw_wide(wide, channels, x, y, sizes[5, i], sizes[3, i], sizes[4, i], stamp)
+    return largest, some_tiny
+
+
+@njit(**FAST)
+def _add(flat, tiny, channels, strides, count, stamp, room):
+    """Add the stamps of particles that are measured, but the wide ones."""
+    pixels, others = flat
+    table, small = stamp[0], stamp[4]
+    places, sizes, scratch = room
+    for i in range(count):
+        at, rows, node, way = np.int64(places[0, i]), places[1, i], places[2, i], places[3, i]
+        stride = strides[0]
+        first_x, first_y, inverse, m, n = sizes[0, i], sizes[1, i], sizes[2, i], sizes[3, i], sizes[4, i]
         # The loops over rows test at their end: with a test before, the compiler moves rows of stamps behind it and
         # keeps all coefficients in memory until then (a third slower).
         row = 0
-        if columns <= PACKED_PX and rows <= PACKED_PX:
+        if way < _SINGLE:
             p = _clipped(halves(ramp(first_x), ramp(first_y - f32(8.0))), inverse)
             v = _v(p)
-            x0 = _packed(scratch, table, node, 0, p, v)
-            x1 = _packed(scratch, table, node, 1, p, v)
-            x2 = _packed(scratch, table, node, 2, p, v)
-            x3 = _packed(scratch, table, node, 3, p, v)
-            while True:
-                a = _sum(scratch, row, x0, x1, x2, x3)
-                if in_deep:
-                    add_lower(deep, at, times(m, a))
+            x0 = _small(scratch, small, 0, p, v)
+            x1 = _small(scratch, small, 1, p, v)
+            x2 = _small(scratch, small, 2, p, v)
+            x3 = _small(scratch, small, 3, p, v)
+            if way < _SMALL:
+                while True:
+                    a = _sum(scratch, 8 + row, x0, x1, x2, x3)
+                    add_product(tiny[0], at, m, a)
                     if channels == 2:
-                        add_lower(deep_others, at, times(n, a))
-                else:
-                    store(pixels, at, fma(m, a, load(pixels, at)))
+                        add_product(tiny[1], at, n, a)
+                    at += strides[1]
+                    row += 1
+                    if row >= rows:
+                        break
+            else:
+                while True:
+                    a = _sum(scratch, 8 + row, x0, x1, x2, x3)
+                    add_product(pixels, at, m, a)
                     if channels == 2:
-                        store(others, at, fma(n, a, load(others, at)))
-                at += stride
-                row += 1
-                if row >= rows:
-                    break
-        elif columns <= 16 and rows <= 16:
+                        add_product(others, at, n, a)
+                    at += stride
+                    row += 1
+                    if row >= rows:
+                        break
+        elif way < _SHARED:
             p, q = _clipped(ramp(first_x), inverse), _clipped(ramp(first_y), inverse)
             v, w = _v(p), _v(q)
             x0 = _single(scratch, table, node, 0, p, v, q, w)
@@ -236,17 +288,17 @@ def draw_some(flat, wide, in_deep, channels, stride, records, order, scale, corn
             x3 = _single(scratch, table, node, 3, p, v, q, w)
             while True:
                 a = _sum(scratch, row, x0, x1, x2, x3)
-                store(pixels, at, fma(m, a, load(pixels, at)))
+                add_product(pixels, at, m, a)
                 if channels == 2:
-                    store(others, at, fma(n, a, load(others, at)))
+                    add_product(others, at, n, a)
                 at += stride
                 row += 1
                 if row >= rows:
                     break
-        else:
+        elif way < _WIDE:
             p, q = _clipped(ramp(first_x), inverse), _clipped(ramp(first_y), inverse)
             v, w = _v(p), _v(q)
-            if columns <= 24 and rows <= 24:
+            if way < _DOUBLE:
                 z = _clipped(halves(ramp(first_x + f32(16.0)), ramp(first_y + f32(8.0))), inverse)
                 u = _v(z)
                 x0, z0 = _shared(scratch, table, node, 0, p, v, q, w, z, u)
@@ -262,16 +314,15 @@ def draw_some(flat, wide, in_deep, channels, stride, records, order, scale, corn
                 x3, z3 = _double(scratch, table, node, 3, p, v, s, g, q, w, t, h)
             while True:
                 a, b = _sum(scratch, row, x0, x1, x2, x3), _sum(scratch, row, z0, z1, z2, z3)
-                store(pixels, at, fma(m, a, load(pixels, at)))
-                store(pixels, at + 16, fma(m, b, load(pixels, at + 16)))
+                add_product(pixels, at, m, a)
+                add_product(pixels, at + 16, m, b)
                 if channels == 2:
-                    store(others, at, fma(n, a, load(others, at)))
-                    store(others, at + 16, fma(n, b, load(others, at + 16)))
+                    add_product(others, at, n, a)
+                    add_product(others, at + 16, n, b)
                 at += stride
                 row += 1
                 if row >= rows:
                     break
-    return largest
 
 
 @njit(**FAST)
@@ -294,7 +345,7 @@ def _shares(table, node, centre, half, start, stop, out):
 @njit(**FAST)
 def draw_wide(image, channels, x, y, r, first, second, stamp):
     """A stamp of any size, clipped to the array (float64, channels first), whose corner is where x and y start."""
-    table, reach, squeeze, density = stamp
+    table, reach, squeeze, density = stamp[0], stamp[1], stamp[2], stamp[3]
     half = reach * math.sqrt(np.float64(r) * np.float64(r) - squeeze)
     node = int(density / (half * half) + 0.5)
     left, right = max(int(math.floor(x - half)), 0), min(int(math.floor(x + half)) + 1, image.shape[2])

@@ -10,17 +10,17 @@ import numpy as np
 from numba import njit
 from numpy.typing import NDArray
 
-from tilemap.project.products import FAST, MARGIN, PACKED_PX, draw_some, room_for_drawing
-from tilemap.project.stamps import Stamps
+from tilemap.project.products import FAST, MARGIN, TINY_PX, draw_some, room_for_drawing
+from tilemap.project.stamps import SMALL_PX, Stamps
 
 CELL_PX = 48
 """Particles are drawn cell by cell of this size, so that the pixels they touch stay in cache. It is also the height of
 the bands that workers share out: a stamp reaches at most 16 pixels out of its band, so two bands of the same parity
 touch no pixel together."""
 FEW = 64
-"""Particles of one cell in a row that are drawn on the image itself; more are piled up first."""
-RUN = 1024
-"""Particles after which a single-precision pile goes to the double-precision one."""
+"""Particles of one cell in a row that are all drawn on the image itself; of more, the tiny ones are piled up first."""
+RUN = 4096
+"""Particles of one cell that are drawn on the image itself, but for tiny ones; of more, each so many are piled up first."""
 
 
 @njit(**FAST)
@@ -44,73 +44,73 @@ def _cell_of(records, index, scale, cells_y, cells_x):
 
 
 @njit(**FAST)
+def _end_of_cell(records, order, start, scale, cells_y, cells_x):
+    """Where in `order`, sorted by cell, the cell of its element `start` ends."""
+    cell = _cell_of(records, order[start], scale, cells_y, cells_x)
+    low, step = start, FEW
+    while low + step < len(order) and _cell_of(records, order[low + step], scale, cells_y, cells_x) == cell:
+        low += step
+        step *= 2
+    high = min(low + step, len(order))  # the first of another cell lies in (low, high]
+    while high - low > 1:
+        middle = (low + high) // 2
+        if _cell_of(records, order[middle], scale, cells_y, cells_x) == cell:
+            low = middle
+        else:
+            high = middle
+    return high
+
+
+@njit(**FAST)
 def _draw(image, wide, channels, records, order, scale, value, stamp):
     """Draw particles sorted by cell; where many of one cell follow each other, pile them up aside first.
 
     A single-precision pixel that a million particles are added to one by one loses 1e-4 of them, and of a million
-    equal ones 1e-3. Piles are in double precision, and stamps wider than PACKED_PX get there every `RUN` particles.
+    equal ones 1e-3. Piles are in double precision; stamps wider than TINY_PX get there every `RUN` particles.
     """
     side = CELL_PX + 2 * MARGIN
     pile = np.zeros((channels, side, side), dtype=np.float64)
     lines = np.zeros((channels, side, side), dtype=np.float32)
-    doubles = pile[0].reshape(-1), pile[channels - 1].reshape(-1)
-    direct = (image[0].reshape(-1), image[channels - 1].reshape(-1), *doubles)
-    aside = (lines[0].reshape(-1), lines[channels - 1].reshape(-1), *doubles)
+    on_image = image[0].reshape(-1), image[channels - 1].reshape(-1)
+    on_pile = pile[0].reshape(-1), pile[channels - 1].reshape(-1)
+    on_lines = lines[0].reshape(-1), lines[channels - 1].reshape(-1)
     room = room_for_drawing()
+    stride, pile_stride = np.int32(image.shape[2]), np.int32(side)
     cells_y = max(1, -(-(image.shape[1] - 2 * MARGIN) // CELL_PX))
     cells_x = max(1, -(-(image.shape[2] - 2 * MARGIN) // CELL_PX))
     box = np.zeros(4, dtype=np.int64)
-    start, stop, count = 0, 0, len(order)
-    cell, crowded, largest = -1, False, np.float32(0.0)
+    start, count = 0, len(order)
     while start < count:
-        if cell < 0:  # not within a crowded one
-            cell = _cell_of(records, order[start], scale, cells_y, cells_x)
-            crowded = (
-                start + FEW <= count and _cell_of(records, order[start + FEW - 1], scale, cells_y, cells_x) == cell
-            )
-            largest = np.float32(0.0)
+        cell = _cell_of(records, order[start], scale, cells_y, cells_x)
+        few = min(start + FEW, count)
+        if few == count or _cell_of(records, order[few], scale, cells_y, cells_x) != cell:
+            some, strides, corners = order[start:few], (stride, stride), ((0, 0), (0, 0))
+            draw_some(on_image, on_image, wide, channels, strides, records, some, scale, corners, value, stamp, room)
+            start = few
+            continue
+        stop = _end_of_cell(records, order, start, scale, cells_y, cells_x)
+        crowded = stop - start > RUN
         row, column = cell // cells_x, cell % cells_x
-        stop = min(start + (RUN if crowded else FEW), count)
-        ends = not crowded or stop == count
-        if crowded and stop < count and _cell_of(records, order[stop], scale, cells_y, cells_x) != cell:
-            ends = True
-        if crowded and _cell_of(records, order[stop - 1], scale, cells_y, cells_x) != cell:
-            ends = True
-            low = start
-            while stop - low > 1:  # the first of another cell lies in (low, stop)
-                middle = (low + stop) // 2
-                if _cell_of(records, order[middle], scale, cells_y, cells_x) == cell:
-                    low = middle
-                else:
-                    stop = middle
-        reach = draw_some(
-            aside if crowded else direct,
-            wide,
-            crowded,
-            channels,
-            side if crowded else image.shape[2],
-            records,
-            order[start:stop],
-            scale,
-            (row * CELL_PX if crowded else 0, column * CELL_PX if crowded else 0),
-            value,
-            stamp,
-            room,
-        )
-        if crowded:
-            largest = max(largest, reach)
-            touched = int(largest) + 2  # cells at the rim also hold what lies outside
-            box[0] = MARGIN - touched if row > 0 else 0
+        here = row * CELL_PX, column * CELL_PX
+        flat, strides = on_lines if crowded else on_image, (pile_stride if crowded else stride, pile_stride)
+        corners = (here if crowded else (0, 0), here)
+        largest, piled = np.float32(0.0), False
+        for first in range(start, stop, RUN):
+            some = order[first : min(first + RUN, stop)]
+            reach, tiny = draw_some(
+                flat, on_pile, wide, channels, strides, records, some, scale, corners, value, stamp, room
+            )
+            largest, piled = max(largest, reach), piled or tiny or crowded
+            touched = int(largest if crowded else min(largest, np.float32(TINY_PX))) + 2
+            box[0] = MARGIN - touched if row > 0 else 0  # cells at the rim also hold what lies outside
             box[1] = MARGIN + CELL_PX + touched if row < cells_y - 1 else side
             box[2] = MARGIN - touched if column > 0 else 0
             box[3] = MARGIN + CELL_PX + touched if column < cells_x - 1 else side
-            if 2.0 * reach > PACKED_PX - 2:  # some were drawn there
+            if crowded and 2.0 * reach > TINY_PX - 1:  # some touch more pixels
                 _move(lines, pile, channels, box, 0, 0)
-            if ends:
-                _move(pile, image, channels, box, row * CELL_PX, column * CELL_PX)
+        if piled:
+            _move(pile, image, channels, box, *here)
         start = stop
-        if ends:
-            cell = -1
 
 
 def draw(
@@ -145,10 +145,12 @@ def draw(
         Whether any particle may be wider than LARGE_PX here: those need another image, in double precision.
     """
     channels = image.shape[0]
+    f32 = np.float32
+    small = stamps.small, f32(stamps.small_reach), f32(SMALL_PX / stamps.small_reach if finest else 0.0)
     if finest:
-        stamp = stamps.averaged, np.float32(stamps.reach), np.float32(0.0), np.float32(0.0)
+        stamp = stamps.averaged, f32(stamps.reach), f32(0.0), f32(0.0), *small
     else:
-        stamp = stamps.spline, np.float32(stamps.reach), np.float32(stamps.squeeze), np.float32(stamps.density)
+        stamp = stamps.spline, f32(stamps.reach), f32(stamps.squeeze), f32(stamps.density), *small
     for start in range(0, channels, 2):
         pair = image[start : start + 2]
         exact = np.zeros(pair.shape if wide else (1, 1, 1), dtype=np.float64)

@@ -10,7 +10,8 @@ pixels exactly, however small the kernel is, and the weights sum to one because 
 
 Two kinds of image are drawn on:
 
-- the finest image holds averages over pixels: its stamps are just that;
+- the finest image holds averages over pixels: its stamps are just that. Small ones have polynomials of their own, with
+  fewer terms, fitted to averages over pixels rather than to the kernel, of whose shape less is left there;
 - coarser images hold coefficients of quartic B-splines (see `vcycle`), so their stamps are weights whose spline is the
   kernel. They are narrower than the kernel, as averages and splines widen what they carry, and change with its radius.
 
@@ -39,7 +40,10 @@ RANK = 4
 TERMS = 9
 """Coefficients of A_k(x) / x in powers of v = 2 x^2 - 1 (powers of x^2 need larger ones that cancel)."""
 ENDS, SIGNS = RANK * TERMS, RANK * TERMS + RANK
-ROW = RANK * TERMS + 2 * RANK
+SMALL_TERMS = 7
+SMALL_ENDS, SMALL_SIGNS = RANK * SMALL_TERMS, RANK * SMALL_TERMS + RANK
+SMALL_PX = 3.5
+"""Largest half width of a small stamp: it touches at most eight pixels each way."""
 NODES = 64
 """Widths for which coarse stamps are tabulated, evenly in 1 / width^2: the nearest is within 1e-5 of the right one."""
 
@@ -54,9 +58,13 @@ class Stamps:
         Half width of a stamp on the finest image in units of the support radius: beyond it lies at most 2e-5 of the mass.
     squeeze : float
         Square pixels by which stamps on coarse images are narrower: half width is reach sqrt(R^2 - squeeze).
-    averaged : float32 (1, ROW)
-        On the finest image, for all radii.
-    spline : float32 (NODES, ROW)
+    averaged : float32 (1, RANK (TERMS + 2))
+        On the finest image, for all radii but those of small stamps.
+    small_reach : float
+        As reach, for small stamps: those whose half width is then at most SMALL_PX.
+    small : float32 (RANK (SMALL_TERMS + 2),)
+        On the finest image, for small stamps.
+    spline : float32 (NODES, RANK (TERMS + 2))
         On coarse images; row k is for a half width of sqrt(density / k).
     density : float
         Square pixels.
@@ -65,6 +73,8 @@ class Stamps:
     reach: float
     squeeze: float
     averaged: NDArray[np.float32]
+    small_reach: float
+    small: NDArray[np.float32]
     spline: NDArray[np.float32]
     density: float
 
@@ -78,24 +88,29 @@ def stamps_for(kernel_name: str) -> Stamps:
     density = (NODES - 1) * narrowest**2
     powers = (np.arange(NODES) / density)[:, None] ** np.arange(len(orders))
     spline = _rows(np.tensordot(powers, orders, axes=1), numbers.signs)
-    return Stamps(numbers.reach, numbers.squeeze, spline[:1], spline, density)
+    small = _rows(np.array(numbers.small).reshape(1, RANK, SMALL_TERMS), numbers.small_signs)[0]
+    return Stamps(numbers.reach, numbers.squeeze, spline[:1], numbers.small_reach, small, spline, density)
 
 
 def _rows(polynomials: NDArray[np.float64], signs: tuple[int, ...]) -> NDArray[np.float32]:
-    """Rows of a table from polynomials (n, RANK, TERMS): ends as drawing computes them, signs so that weights sum to one."""
-    rows = np.empty((len(polynomials), ROW), dtype=np.float32)
-    rows[:, :ENDS] = polynomials.reshape(-1, ENDS)
-    coefficients = rows[:, :ENDS].reshape(-1, RANK, TERMS)
+    """Rows of a table from polynomials (n, RANK, terms): ends as drawing computes them, signs so that weights sum to one."""
+    count, _, terms = polynomials.shape
+    rows = np.empty((count, RANK * (terms + 2)), dtype=np.float32)
+    rows[:, : RANK * terms] = polynomials.reshape(count, -1)
+    coefficients = rows[:, : RANK * terms].reshape(polynomials.shape)
     ends = coefficients[..., -1]
-    for k in range(TERMS - 2, -1, -1):  # Horner's rule at v = 1 in single precision
+    for k in range(terms - 2, -1, -1):  # Horner's rule at v = 1 in single precision
         ends = ends + coefficients[..., k]
-    rows[:, ENDS:SIGNS] = ends
     mass = (np.array(signs) * (2.0 * ends.astype(np.float64)) ** 2).sum(axis=1)
     # Where a stamp is one pixel, rounding may leave 1 - 6e-8 of it: the nearest factors that leave it whole are taken.
-    bits = np.array(sorted(range(-24, 25), key=abs))
-    factors = (np.array(signs) / (mass * (1.0 + bits[:, None] * 2.0**-26))[..., None]).astype(np.float32)
+    steps = np.stack(np.meshgrid(np.arange(-4, 5), *[np.arange(-2, 3)] * (RANK - 1), indexing="ij"), -1).reshape(
+        -1, RANK
+    )
+    steps = steps[np.argsort(np.abs(steps).sum(axis=1), kind="stable")]
+    change = steps[:, None] * 2.0**-26 / (2.0 * ends.astype(np.float64)) ** 2
+    factors = (np.array(signs) * (1.0 + np.clip(change, -0.02, 0.02)) / mass[:, None]).astype(np.float32)
     whole = _one_pixel(ends, factors) == 1.0
-    rows[:, SIGNS:] = factors[np.argmax(whole, axis=0), np.arange(len(rows))]
+    rows[:, RANK * terms :] = np.hstack([ends, factors[np.argmax(whole, axis=0), np.arange(count)]])
     return rows
 
 

@@ -16,9 +16,12 @@ import { Markers } from './markers.js';
 import { Motion } from './motion.js';
 import { Catalogue } from './objects.js';
 import { Reading } from './reading.js';
+import { Rulers } from './rulers.js';
 import { ScaleEdge } from './scale.js';
 import { State } from './state.js';
 import { Status } from './status.js';
+import { Tape } from './tape.js';
+import { TapeNote } from './tape-note.js';
 import { Tiles } from './tiles.js';
 import { ToneEdge } from './tone.js';
 import { fixed } from './units.js';
@@ -62,7 +65,22 @@ export class Frame {
     this.scale = new ScaleEdge(at('scale'), this.state, () => this.motion);
     this.depth = new DepthEdge(at('depth'), at('depth-corner'), this.state);
     this.census = new CensusEdge(at('census'), at('census-corner'), this.state);
-    this.reading = new Reading(at('reading'), this.state, this.map, (value) => this.tone.setReading(value));
+    const measure = () => this.scale.measure;
+    this.reading = new Reading(at('reading'), this.state, this.map, {
+      tell: (value) => this.tone.setReading(value),
+      copy: () => this.copyReading(),
+      measure,
+    });
+    this.rulers = new Rulers(this.state, measure);
+    this.tape = new Tape(this.state, {
+      view: () => this.motion.view,
+      measure,
+      wake: () => this.wake(),
+      hint: (text) => (text ? status.say(text, { kind: 'tape', stay: 0 }) : status.clear('tape')),
+      taken: (taken) => this.tapeTaken(taken),
+    });
+    this.tapeNote = new TapeNote(at('tape'), this.state, { measure, copy: (text, name) => this.copy(text, name), away: () => this.tape.away() });
+    this.tapeWord = make('button.word.act', { type: 'button', 'aria-pressed': 'false', title: say('tape_take_title'), click: (event) => this.takeTape(event.detail === 0) }, say('tape_take'));
     this.catalogue = new Catalogue(this.state, {
       objects: (list) => this.markers.setList(list),
       census: (counts) => this.census.setCounts(counts),
@@ -74,6 +92,7 @@ export class Frame {
     this.linking = new Linking(this);
     this.title();
     listen(this.hand, () => this.motion, {
+      press: (x, y, touch) => this.tape.press(x, y, touch),
       tap: (x, y, touch) => this.tapped(x, y, touch),
       hover: (x, y) => this.hovered(x, y),
       begin: () => this.hand.classList.add('moving'),
@@ -99,7 +118,7 @@ export class Frame {
     at('title').replaceChildren(make('h1', {}, make('a', { href: '../', title: atlas.json.about ?? '' }, atlas.title || say('untitled'))), make('div.dim', {}, facts.join(' · ')));
     if (atlas.epochs.length > 1) at('title').append(this.epochs(atlas.epochs));
     const keys = make('button.word.act.keys', { type: 'button', click: () => this.showKeys() }, say('keys'));
-    at('links').replaceChildren(this.linking.word, keys, ...this.looks.words);
+    at('links').replaceChildren(this.tapeWord, this.linking.word, keys, ...this.looks.words);
   }
 
   /** A word for each epoch, to step through in place. @param {import('./atlas.js').Epoch[]} list */
@@ -128,6 +147,10 @@ export class Frame {
     this.sheets.update(state.epoch.sheets.map((s, i) => ({ value: s.name, text: s.title || s.name, title: say('sheet_key', { n: i + 1 }) })), state.sheet.name);
     if (changed.has('epoch')) this.title();
     if (changed.has('object')) this.seekObject();
+    this.tape.follow();
+    if (changed.has('tape')) this.tapeNote.back = false;
+    else if (changed.has('object') && state.object) this.tapeNote.back = true;
+    this.tapeNote.show(state.tape);
     this.tone.draw();
     this.depth.draw();
     this.census.draw();
@@ -162,7 +185,7 @@ export class Frame {
     this.motion.step(now);
     const { view } = this.motion;
     const more = this.map.render(view, now);
-    this.markers.draw(view, (context) => this.grid.draw(context, view));
+    this.markers.draw(view, (context) => this.overMap(context, view));
     if (this.drawnView !== view) this.scale.draw();
     /** @type {View} */ this.drawnView = view;
     this.reading.update(view);
@@ -175,6 +198,16 @@ export class Frame {
     // For whoever measures: when the first view was complete.
     if (!busy && this.map.front && !performance.getEntriesByName('first-view').length) performance.mark('first-view');
     if (more || this.motion.moving) this.wake();
+  }
+
+  /** What is drawn over the map, under the rings. @param {CanvasRenderingContext2D} context @param {View} view */
+  overMap(context, view) {
+    const { tape } = this;
+    const { em } = this.size;
+    this.grid.draw(context, view);
+    this.rulers.draw(context, view, 0.86 * em, this.reading.cursor);
+    tape.draw(context, view, 0.92 * em);
+    this.tapeNote.tie(context, tape.path(view), this.map.canvas.getBoundingClientRect());
   }
 
   /** Asks for tiles now, or at most every so often while things move. @param {number} every ms */
@@ -216,7 +249,8 @@ export class Frame {
     const box = at('map').getBoundingClientRect();
     const ratio = devicePixelRatio;
     const [dw, dh] = [Math.max(Math.round(box.width * ratio), 16), Math.max(Math.round(box.height * ratio), 16)];
-    return { w: dw / ratio, h: dh / ratio, dw, dh, ratio };
+    // The size of words on the map is that of words beside it.
+    return { w: dw / ratio, h: dh / ratio, dw, dh, ratio, em: parseFloat(getComputedStyle(document.body).fontSize) };
   }
 
   resized() {
@@ -236,6 +270,10 @@ export class Frame {
   /** @param {number} x @param {number} y @param {boolean} touch */
   tapped(x, y, touch) {
     if (this.markers.tap(x, y)) return;
+    if (this.tape.near(x, y, touch)) {
+      this.tapeNote.back = false;
+      this.tapeNote.show(this.state.tape);
+    }
     if (touch) {
       this.reading.hover(null, null);
       this.reading.place = this.motion.view.invert(x, y);
@@ -246,7 +284,9 @@ export class Frame {
   /** @param {number|null} x @param {number|null} y */
   hovered(x, y) {
     this.reading.hover(x, y);
-    this.hand.classList.toggle('over', this.markers.hover(x, y));
+    this.tape.hover(x, y);
+    const grip = !this.tape.taken && x !== null && y !== null && this.tape.knotAt(x, y) >= 0;
+    this.hand.classList.toggle('over', !this.tape.taken && (this.markers.hover(x, y) || grip));
     this.wake();
   }
 
@@ -267,7 +307,22 @@ export class Frame {
     motion.fly(motion.view.with({ u: found.u, v: found.v, width: Math.min(width, motion.view.width) }));
   }
 
+  /** @param {boolean} [byKey] */
+  takeTape(byKey = true) {
+    this.tape.byKey = byKey && !this.tape.cursor;
+    this.tape.take();
+    this.hand.focus({ preventScroll: true });
+  }
+
+  /** @param {boolean} taken */
+  tapeTaken(taken) {
+    this.tapeWord.setAttribute('aria-pressed', String(taken));
+    this.hand.classList.toggle('laying', taken);
+  }
+
   putAway() {
+    if (this.tape.taken) return this.tape.down();
+    if (!this.keysShown && !this.state.object) this.tape.away();
     this.keysShown = false;
     this.state.set({ object: null });
     this.markers.describe();
@@ -279,6 +334,8 @@ export class Frame {
     this.keysShown = !this.keysShown;
     if (!this.keysShown) return this.markers.describe();
     this.markers.choose(null);
+    this.tapeNote.back = true;
+    this.tapeNote.show(this.state.tape);
     note.hidden = false;
     note.style.transform = 'translateY(12px)';
     note.replaceChildren(...keysNote(() => this.putAway()));
@@ -295,9 +352,15 @@ export class Frame {
     else this.status.say(say('trouble_object', { name: object }));
   }
 
-  async copyReading() {
-    const done = await navigator.clipboard?.writeText(this.reading.text).then(() => true, () => false);
-    this.status.say(done ? say('copied_value') : this.reading.text);
+  /** @param {string} text @param {string} name what it is */
+  async copy(text, name) {
+    if (!text) return;
+    const done = await navigator.clipboard?.writeText(text).then(() => true, () => false);
+    this.status.say(done ? say('copied', { name }) : text);
+  }
+
+  copyReading() {
+    return this.copy(this.reading.text, say('reading'));
   }
 
   /** The atlas was built anew while it was looked at. */

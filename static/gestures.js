@@ -1,7 +1,13 @@
 // Hands on the map: drag and fling, wheel, pinch, tap and double tap, with mouse, pen or fingers alike. In: pointer events
 // on one element. Out: calls on the motion, and taps and hovers for others to use.
 
-/** @typedef {{tap(x: number, y: number, touch: boolean): void, hover(x: number|null, y: number|null): void, settled(): void, begin(): void}} Hands */
+/** @typedef {{move(x: number, y: number): void, end(x: number, y: number, tap: boolean): void, cancel(): void}} Stroke */
+/**
+ * @typedef {object} Hands
+ * @property {(x: number, y: number, touch: boolean) => void} tap @property {(x: number|null, y: number|null) => void} hover
+ * @property {() => void} settled @property {() => void} begin
+ * @property {(x: number, y: number, touch: boolean) => Stroke|null} press takes a press for itself; then the map stays
+ */
 
 const TAP_SLOP = 8;
 const TAP_TIME = 350;
@@ -41,6 +47,8 @@ export function listen(element, motionOf, hands) {
   let pressed = 0;
   let lastTap = { at: -1e9, x: 0, y: 0 };
   let wheelRest = 0;
+  /** @type {Stroke|null} */
+  let stroke = null;
   const turned = wheelFactor();
 
   /** @param {{clientX: number, clientY: number}} event @returns {[number, number]} */
@@ -53,8 +61,10 @@ export function listen(element, motionOf, hands) {
     if (event.button !== 0) return;
     element.setPointerCapture(event.pointerId);
     motionOf().stop();
-    hands.begin();
     down.set(event.pointerId, place(event));
+    stroke?.cancel();
+    stroke = down.size === 1 ? hands.press(...place(event), event.pointerType === 'touch') : null;
+    if (!stroke) hands.begin();
     if (down.size === 1) {
       trail = [];
       travelled = 0;
@@ -69,8 +79,9 @@ export function listen(element, motionOf, hands) {
     if (!before) return;
     if (down.size === 1) {
       travelled += Math.hypot(x - before[0], y - before[1]);
-      if (travelled < TAP_SLOP && event.pointerType === 'touch') return;
+      if (travelled < TAP_SLOP && (stroke || event.pointerType === 'touch')) return;
       down.set(event.pointerId, [x, y]);
+      if (stroke) return stroke.move(x, y);
       trail.push([event.timeStamp, x, y]);
       trail = trail.filter(([t]) => event.timeStamp - t < 100);
       motionOf().drag(x - before[0], y - before[1]);
@@ -93,7 +104,12 @@ export function listen(element, motionOf, hands) {
       return;
     }
     const [x, y] = place(event);
-    if (event.type === 'pointerup' && travelled < TAP_SLOP && event.timeStamp - pressed < TAP_TIME) {
+    if (stroke) {
+      const ended = stroke;
+      stroke = null;
+      if (event.type === 'pointerup') ended.end(x, y, travelled < TAP_SLOP);
+      else ended.cancel();
+    } else if (event.type === 'pointerup' && travelled < TAP_SLOP && event.timeStamp - pressed < TAP_TIME) {
       const twice = event.timeStamp - lastTap.at < DOUBLE_TIME && Math.hypot(x - lastTap.x, y - lastTap.y) < 24;
       lastTap = twice ? { at: -1e9, x, y } : { at: event.timeStamp, x, y };
       if (twice) motionOf().zoomBy(x, y, event.shiftKey ? 0.5 : 2);

@@ -39,6 +39,10 @@ export function keyboard(frame) {
     g: () => frame.markers.chosen && frame.goTo(frame.markers.chosen),
     m: () => state.set({ markers: !state.markers }),
     u: () => frame.scale.turn(),
+    t: () => frame.takeTape(),
+    Enter: () => frame.tape.enter(),
+    Backspace: () => frame.tape.back(),
+    y: () => frame.copy(frame.tapeNote.all(), say('tape')),
     c: () => frame.copyReading(),
     k: () => frame.linking.copy(),
     d: () => frame.looks.turn(),
@@ -54,6 +58,7 @@ export function keyboard(frame) {
   addEventListener('keydown', (event) => {
     if (event.ctrlKey || event.metaKey || event.altKey || event.defaultPrevented) return;
     if (/^(INPUT|TEXTAREA|SELECT)$/.test(/** @type {Element} */ (event.target).tagName)) return;
+    if (event.key === 'Enter' && /^(BUTTON|A)$/.test(/** @type {Element} */ (event.target).tagName)) return;
     const action = does[event.key];
     if (!action) return;
     action(event);

@@ -10,12 +10,16 @@
  * @property {string} [curve] @property {string} [ramp]
  * @property {[number, number]} [census] unit of the ranked column
  * @property {string} [object] @property {string} [lengths] @property {string} [markers]
+ * @property {[number, number][]} [line] @property {[number, number][]} [outline] atlas unit
  */
 
 const NUMBERS = ['u', 'v', 'width'];
 const PAIRS = ['depth', 'tone', 'census'];
+const PATHS = ['line', 'outline'];
 const NAMES = ['epoch', 'sheet', 'curve', 'ramp', 'object', 'lengths', 'markers'];
-const ORDER = ['u', 'v', 'width', 'epoch', 'sheet', 'depth', 'tone', 'curve', 'ramp', 'census', 'object', 'lengths', 'markers'];
+const ORDER = ['u', 'v', 'width', 'epoch', 'sheet', 'depth', 'tone', 'curve', 'ramp', 'census', 'object', 'lengths', 'markers', 'line', 'outline'];
+/** Places in a line or an outline, at most: as many as the server takes. */
+const MOST_PLACES = 1000;
 
 /**
  * @param {Linked} view
@@ -27,7 +31,8 @@ export function write(view) {
   for (const key of ORDER) {
     const value = all[key];
     if (value === undefined || value === null) continue;
-    const text = Array.isArray(value) ? value.map(short).join(':') : typeof value === 'number' ? short(value) : escape(value);
+    const pair = (/** @type {number[]} */ numbers) => numbers.map(short).join(':');
+    const text = PATHS.includes(key) ? value.map(pair).join(',') : Array.isArray(value) ? pair(value) : typeof value === 'number' ? short(value) : escape(value);
     parts.push(`${key}=${text}`);
   }
   return `#${parts.join('&')}`;
@@ -55,10 +60,17 @@ export function read(fragment) {
       const pair = text.split(':').map(real);
       if (pair.length !== 2 || pair[0] === null || pair[1] === null || pair[0] >= pair[1]) bad.push(part);
       else view[key] = /** @type {[number, number]} */ (pair);
+    } else if (PATHS.includes(key)) {
+      const places = text.split(',').map((place) => place.split(':').map(real));
+      const whole = places.every((place) => place.length === 2 && !place.includes(null));
+      const least = key === 'outline' ? 3 : 2;
+      if (!whole || places.length < least || places.length > MOST_PLACES) bad.push(part);
+      else view[key] = places;
     } else if (NAMES.includes(key) && text) view[key] = text;
     else bad.push(part);
   }
-  return { view, bad };
+  // A long one is told by its beginning.
+  return { view, bad: bad.map((part) => (part.length > 40 ? `${part.slice(0, 39)}…` : part)) };
 }
 
 /** A number rounded so that write() and read() give it back. @param {number} x @param {number} digits significant */

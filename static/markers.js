@@ -156,7 +156,8 @@ export class Markers {
   /** The thin line from the opening of the chosen ring to its note. @param {Ring} ring @param {View} view */
   tie({ x, y, r }, view) {
     const { context, note, canvas } = this;
-    if (note.hidden) return;
+    // Hidden, or behind the note of the tape.
+    if (!note.offsetWidth) return;
     const box = note.getBoundingClientRect();
     const map = canvas.getBoundingClientRect();
     const below = box.width > 0.8 * view.w;

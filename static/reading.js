@@ -2,21 +2,21 @@
 // place that was tapped, or the middle of the map. In: view, cursor. Out: three short lines, and the value for the tone edge.
 
 import { make } from './dom.js';
-import { decimals, fixed, number, unit } from './units.js';
+import { coordinates, decimals, fixed, number, unit } from './units.js';
 import { say } from './words.js';
 
 export class Reading {
   /**
    * @param {HTMLElement} root @param {import('./state.js').State} state @param {import('./map.js').MapSurface} map
-   * @param {(value: number|null) => void} tell
+   * @param {{tell(value: number|null): void, copy(): void, measure(): import('./units.js').Measure}} does
    */
-  constructor(root, state, map, tell) {
+  constructor(root, state, map, does) {
     this.state = state;
     this.map = map;
-    this.tell = tell;
+    this.does = does;
     /** @type {[number, number]|null} CSS pixels on the map */ this.cursor = null;
     /** @type {[number, number]|null} a place that was tapped */ this.place = null;
-    this.value = make('output.value', { 'aria-live': 'off' });
+    this.value = make('button.value', { type: 'button', title: say('reading_title'), click: () => does.copy() });
     this.where = make('div.where');
     root.append(this.value, this.where);
     this.asked = 0;
@@ -36,10 +36,13 @@ export class Reading {
     const [u, v] = this.cursor ? view.invert(...this.cursor) : (this.place ?? [view.u, view.v]);
     const { atlas } = this.state;
     const sheet = this.map.front?.layer.sheet ?? this.state.sheet;
-    const places = decimals(Math.max(1 / view.scale, atlas.pixel / 10));
+    const measure = this.does.measure();
+    const { factor, name } = coordinates(atlas.bounds, measure);
+    const places = decimals(Math.max(1 / view.scale, atlas.pixel / 10) * factor);
     const [a, b] = atlas.view.axes ?? ['u', 'v'];
-    this.where.replaceChildren(...[[a, u], [b, v]].map(([axis, x]) => make('div', {}, `${axis} ${fixed(x, places)} ${atlas.view.unit}`)));
-    const where = `${a} = ${fixed(u, places)}, ${b} = ${fixed(v, places)} ${atlas.view.unit}`;
+    const [x, y] = [u, v].map((coordinate) => fixed(coordinate * factor, places));
+    this.where.replaceChildren(...[[a, x], [b, y]].map((parts) => make('div', {}, `${parts.join(' ')} ${name}`)));
+    const where = `${a} = ${x}, ${b} = ${y} ${name}${measure.name === 'proper' || measure.name === 'angle' ? ` (${say(measure.name)})` : ''}`;
     const ask = ++this.asked;
     const at = this.map.pixelAt(view, u, v);
     const found = at ? await this.map.tiles.read(at.key, at.column, at.row) : null;
@@ -52,7 +55,7 @@ export class Reading {
     const exact = value === null || Number.isNaN(value) ? '' : `${Number(value.toPrecision(7))} ${sheet.unit}`;
     this.text = say('reading_copy', { value: exact, where, sheet: sheet.title || sheet.name, level: at?.level ?? '–' }).trim();
     this.value.dataset.value = value === null || Number.isNaN(value) ? '' : String(value);
-    this.tell(value);
+    this.does.tell(value);
   }
 
   /** @param {string} text @param {string} [of] the unit */

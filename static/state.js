@@ -25,11 +25,12 @@ export class State {
     /** @type {string|null} */ this.object = null;
     /** @type {string} */ this.lengths = '';
     this.markers = true;
+    /** @type {import('./tape.js').Laid|null} */ this.tape = null;
     /** @type {Map<string, Tone>} */
     this.usual = new Map();
   }
 
-  /** @param {Partial<Pick<State, 'epoch'|'sheetName'|'slabs'|'tones'|'brush'|'object'|'lengths'|'markers'>>} patch */
+  /** @param {Partial<Pick<State, 'epoch'|'sheetName'|'slabs'|'tones'|'brush'|'object'|'lengths'|'markers'|'tape'>>} patch */
   set(patch) {
     /** @type {Record<string, any>} */ const now = this;
     const changed = new Set(Object.entries(patch).flatMap(([key, value]) => (value === now[key] ? [] : [key])));
@@ -85,6 +86,8 @@ export class State {
       object: this.object ?? undefined,
       lengths: this.lengths || undefined,
       markers: this.markers ? undefined : 'off',
+      line: this.tape && !this.tape.closed ? this.tape.points : undefined,
+      outline: this.tape?.closed ? this.tape.points : undefined,
     };
   }
 
@@ -121,6 +124,7 @@ export class State {
       object: link.object ?? null,
       lengths: link.lengths ?? '',
       markers: link.markers !== 'off',
+      tape: link.outline ? { points: link.outline, closed: true } : link.line ? { points: link.line, closed: false } : null,
     });
     return trouble;
   }

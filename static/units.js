@@ -112,16 +112,43 @@ const STEPS = {
   angle: [[3600, '°'], [60, '′'], [1, '″'], [1e-3, ' mas']],
 };
 
+/** What an angle's sign is called where it cannot be written. @type {Record<string, string>} */
+const SPELT = { '°': 'deg', '′': 'arcmin', '″': 'arcsec' };
+
 /**
- * A length in the atlas unit, read in a measure.
- * @param {number} length @param {Measure} measure @param {number} [digits]
+ * A length, or an area, in the atlas unit, read in a measure: the number and its unit.
+ * @param {number} size @param {Measure} measure @param {1|2} [power] 2 for an area
+ * @returns {{value: number, name: string, plain: string}} the unit as set in print after the number, and as typed
  */
-export function length(length, measure, digits = 3) {
-  const q = length * measure.factor;
-  if (measure.scale === 'other') return quantity(q, measure.unit, digits);
+export function read(size, measure, power = 1) {
+  const q = size * measure.factor ** power;
+  if (measure.scale === 'other') {
+    const plain = measure.unit + (power === 2 && measure.unit ? '2' : '');
+    return { value: q, name: plain && ` ${unit(plain)}`, plain };
+  }
   const steps = STEPS[measure.scale];
-  const [size, name] = steps.find(([s]) => Math.abs(q) >= s * 0.99995) ?? steps[steps.length - 1];
-  return number(q / size, digits) + name;
+  // Areas keep a unit of length down to a hundredth of its square: the next smaller one is a million times less.
+  const least = power === 2 && measure.scale === 'length' ? 0.01 : 0.99995;
+  const [step, name] = steps.find(([s]) => Math.abs(q) >= least * s ** power) ?? steps[steps.length - 1];
+  const plain = SPELT[name] ?? name.trim();
+  return { value: q / step ** power, name: power === 2 ? ` ${plain}²` : name, plain: plain + (power === 2 ? '2' : '') };
+}
+
+/** A length in the atlas unit, read in a measure. @param {number} size @param {Measure} measure @param {number} [digits] */
+export function length(size, measure, digits = 3) {
+  const { value, name } = read(size, measure);
+  return number(value, digits) + name;
+}
+
+/**
+ * The unit that coordinates are read in, the same wherever one is.
+ * @param {import('./view.js').Bounds} view the whole one, atlas unit @param {Measure} measure
+ * @returns {{factor: number, name: string}} factor from the atlas unit
+ */
+export function coordinates({ u0, u1, v0, v1 }, measure) {
+  const extent = Math.max(u1 - u0, v1 - v0);
+  const { value, plain } = read(extent, measure);
+  return { factor: value / extent, name: unit(plain) };
 }
 
 /**

@@ -80,7 +80,42 @@ const WORDS = /** @satisfies {Record<string, Told>} */ ({
   reading_outside: ['outside the volume', 'außerhalb des Volumens'],
   reading_wait: ['…', '…'],
   reading_copy: ['{value} at {where} ({sheet}, level {level})', '{value} bei {where} ({sheet}, Stufe {level})'],
-  copied_value: ['Reading copied', 'Wert kopiert'],
+  reading: ['reading', 'Wert'],
+  reading_title: ['Copy the reading (c)', 'Den Wert kopieren (c)'],
+  copied: ['Copied: {name}', 'Kopiert: {name}'],
+
+  tape: ['Tape', 'Band'],
+  tape_take: ['tape', 'Band'],
+  tape_take_title: ['Measure a length, or what is inside an outline (t)', 'Eine Länge messen, oder was in einem Umriss liegt (t)'],
+  tape_hint: [
+    'Tap to put knots, or draw. The last knot again ends the line, the first closes an outline.',
+    'Knoten tippen oder frei zeichnen. Nochmals der letzte Knoten beendet die Linie, der erste schließt einen Umriss.',
+  ],
+  tape_length: ['length', 'Länge'],
+  tape_ends: ['end to end', 'von Ende zu Ende'],
+  tape_area: ['area', 'Fläche'],
+  tape_around: ['around', 'Umfang'],
+  tape_mean: ['mean', 'Mittel'],
+  tape_spread: ['spread', 'Streuung'],
+  tape_total: ['total', 'Summe'],
+  tape_by_area: ['over area', 'über die Fläche'],
+  tape_weighted: ['weighted by {weight}', 'gewichtet mit {weight}'],
+  tape_deviation: ['standard deviation of its pixels', 'Standardabweichung der Pixel'],
+  tape_fine: ['From every pixel of the file.', 'Aus jedem Pixel der Datei.'],
+  tape_coarse: ['From averages over {size}: level {level}.', 'Aus Mitteln über {size}: Stufe {level}.'],
+  tape_outside: [
+    '{share} % of it lies outside the volume and does not count.',
+    '{share} % davon liegen außerhalb des Volumens und zählen nicht.',
+  ],
+  tape_refused: ['There is nothing inside this outline.', 'In diesem Umriss liegt nichts.'],
+  tape_without: ['This server knows no numbers of outlines.', 'Dieser Server kennt keine Zahlen zu Umrissen.'],
+  tape_damaged: [
+    'The numbers inside cannot be read: the atlas is damaged there.',
+    'Die Zahlen darin sind nicht zu lesen: der Atlas ist dort beschädigt.',
+  ],
+  tape_copy: ['Copy with its unit', 'Mit der Einheit kopieren'],
+  tape_copy_all: ['copy all', 'alles kopieren'],
+  tape_away: ['put away', 'weglegen'],
 
   object: ['Object {id}', 'Objekt {id}'],
   object_close: ['close', 'schließen'],
@@ -94,6 +129,8 @@ const WORDS = /** @satisfies {Record<string, Told>} */ ({
   key_arrows: ['arrows', 'Pfeile'],
   key_shift: ['shift', 'Umschalt'],
   key_esc: ['esc', 'Esc'],
+  key_enter: ['enter', 'Eingabe'],
+  key_backspace: ['backspace', 'Rücktaste'],
 
   trouble_server: ['The server does not answer. Asking again.', 'Der Server antwortet nicht. Wird wieder gefragt.'],
   trouble_back: ['The server answers again.', 'Der Server antwortet wieder.'],
@@ -137,6 +174,10 @@ const KEYS = [
   ['g', ['go to the chosen object', 'zum gewählten Objekt']],
   ['m', ['markers on or off', 'Ringe an oder aus']],
   ['u', ['comoving, proper, angle', 'mitbewegt, eigentlich, Winkel']],
+  ['t', ['take the tape in hand, lay it down', 'das Band zur Hand nehmen, hinlegen']],
+  ['enter', ['put a knot', 'einen Knoten setzen']],
+  ['backspace', ['take the last knot back', 'den letzten Knoten zurücknehmen']],
+  ['y', ['copy what the tape measures', 'kopieren, was das Band misst']],
   ['c', ['copy the reading', 'den Wert kopieren']],
   ['k', ['copy the link', 'den Link kopieren']],
   ['d', ['dark or light around the map', 'Umgebung der Karte dunkel oder hell']],
@@ -184,6 +225,6 @@ export function say(key, fill = {}) {
 /** The keys and what they do. @returns {[string, string][]} */
 export const keyList = () =>
   KEYS.map(([keys, told]) => [
-    keys.replace(/arrows|shift|esc/, (name) => say(/** @type {Word} */ (`key_${name}`))),
+    keys.replace(/arrows|shift|esc|enter|backspace/, (name) => say(/** @type {Word} */ (`key_${name}`))),
     told[column],
   ]);

@@ -132,7 +132,13 @@ def test_every_style_sheet_is_used():
 def test_the_list_of_keys_names_every_key():
     answered = set(re.findall(r"^    (?:'(.+)'|(\w+)): \(", (STATIC / "keys.js").read_text(), re.M))
     listed = re.findall(r"^  \['(.+?)', \['", (STATIC / "words.js").read_text(), re.M)
-    words = {"arrows": ["ArrowLeft", "ArrowRight", "ArrowUp", "ArrowDown"], "shift a": ["A"], "esc": ["Escape"]}
+    words = {
+        "arrows": ["ArrowLeft", "ArrowRight", "ArrowUp", "ArrowDown"],
+        "shift a": ["A"],
+        "esc": ["Escape"],
+        "enter": ["Enter"],
+        "backspace": ["Backspace"],
+    }
     named = {key for entry in listed for key in words.get(entry, entry.replace("−", "-").split())}
     # = and _ lie on the keys of + and -, with or without shift.
     assert {a or b for a, b in answered} - {"=", "_"} == named - {"1", "…", "9"}

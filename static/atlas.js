@@ -3,7 +3,7 @@
 
 import { windowCoding } from './coding.js';
 
-/** @typedef {{name: string, title: string, kind: 'sum'|'mean', weight: string|null, coding: 'log'|'linear', low: number, step: number,
+/** @typedef {{name: string, title: string, kind: 'sum'|'mean'|'dispersion', weight: string|null, mean?: string, coding: 'log'|'linear', low: number, step: number,
  *   unit: string, total_unit: string, totals: number[]|null, percentiles: Record<string, number>, range: [number, number]}} Sheet */
 /** @typedef {{name: string, redshift: number|null, scale_factor: number|null, age_gyr: number|null,
  *   kpc_per_arcsec_comoving: number|null, kpc_per_arcsec_proper: number|null, sheets: Sheet[],
@@ -16,10 +16,12 @@ import { windowCoding } from './coding.js';
  * What a worker needs to make one tile of a layer.
  * @typedef {object} Recipe
  * @property {string[]} tiles addresses, one for each slab
- * @property {string[]|null} weights addresses of the weights, where a mean is taken over several slabs
- * @property {'sum'|'mean'} kind
+ * @property {string[]|null} weights addresses of the weights, where a mean or a dispersion is taken over several slabs
+ * @property {string[]|null} means addresses of the means that a dispersion is about
+ * @property {Sheet['kind']} kind
  * @property {Coding} coding of the tiles
  * @property {Coding|null} weightCoding
+ * @property {Coding|null} meanCoding
  * @property {Coding} shown coding of the codes that are coloured
  */
 
@@ -130,6 +132,7 @@ export class Layer {
     this.sheet = sheet;
     this.slabs = slabs;
     this.weight = sheet.weight ? atlas.sheet(epoch, sheet.weight) : undefined;
+    this.mean = sheet.mean ? atlas.sheet(epoch, sheet.mean) : undefined;
     this.id = `${atlas.id}/${epoch.name}/${sheet.name}/${slabs[0]}-${slabs[1]}`;
     const whole = slabs[0] === 0 && slabs[1] === atlas.slabs && atlas.slabs > 1;
     /** @type {(string|number)[]} */
@@ -145,16 +148,22 @@ export class Layer {
 
   /** @param {number} level @param {number} row @param {number} column @returns {Recipe} */
   recipe(level, row, column) {
-    const { atlas, epoch, sheet, weight } = this;
+    const { atlas, epoch, sheet } = this;
     const address = (/** @type {string} */ name, /** @type {string|number} */ slab) =>
       `tiles/${[atlas.id, epoch.name, name, level, slab, row, column].map(encodeURIComponent).join('/')}`;
-    const weighted = sheet.kind === 'mean' && this.names.length > 1 && weight;
+    const tiles = (/** @type {Sheet} */ from) => this.names.map((slab) => address(from.name, slab));
+    const coding = (/** @type {Sheet} */ { coding, low, step }) => ({ coding, low, step });
+    const several = this.names.length > 1;
+    const weight = several ? this.weight : undefined;
+    const mean = several ? this.mean : undefined;
     return {
-      tiles: this.names.map((slab) => address(sheet.name, slab)),
-      weights: weighted ? this.names.map((slab) => address(weight.name, slab)) : null,
+      tiles: tiles(sheet),
+      weights: weight ? tiles(weight) : null,
+      means: mean ? tiles(mean) : null,
       kind: sheet.kind,
-      coding: { coding: sheet.coding, low: sheet.low, step: sheet.step },
-      weightCoding: weighted ? { coding: weight.coding, low: weight.low, step: weight.step } : null,
+      coding: coding(sheet),
+      weightCoding: weight ? coding(weight) : null,
+      meanCoding: mean ? coding(mean) : null,
       shown: this.coding,
     };
   }
@@ -162,6 +171,6 @@ export class Layer {
 
 /** Mass per slab along the line of sight: the sheet's own, or its weight's. @param {Atlas} atlas @param {Epoch} epoch @param {Sheet} sheet */
 export function slabTotals(atlas, epoch, sheet) {
-  const from = sheet.kind === 'mean' && sheet.weight ? (atlas.sheet(epoch, sheet.weight) ?? sheet) : sheet;
+  const from = sheet.weight ? (atlas.sheet(epoch, sheet.weight) ?? sheet) : sheet;
   return { totals: from.totals ?? new Array(atlas.slabs).fill(0), unit: from.total_unit };
 }

@@ -39,7 +39,7 @@ export function valueTable(c) {
 
 /**
  * The coding used to colour a window of several slabs. A log coding spans more than a hundred decades and serves sums as
- * it is; a linear one is stretched over what a sum of that many slabs can reach. Means stay inside their own range.
+ * it is; a linear one is stretched over what a sum of that many slabs can reach. All else stays inside its own range.
  * @param {{kind: string, coding: string, low: number, step: number}} sheet
  * @param {number} slabs
  * @returns {Coding}
@@ -47,7 +47,7 @@ export function valueTable(c) {
 export function windowCoding(sheet, slabs) {
   const { low, step } = sheet;
   if (sheet.coding === 'log') return { coding: 'log', low, step };
-  if (sheet.kind === 'mean' || slabs === 1) return { coding: 'linear', low, step };
+  if (sheet.kind !== 'sum' || slabs === 1) return { coding: 'linear', low, step };
   const high = low + step * (CODES - 2);
   const least = Math.min(low, slabs * low, 0);
   const most = Math.max(high, slabs * high, 0);

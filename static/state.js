@@ -151,7 +151,7 @@ function usualEnds(sheet) {
 /** Each sheet its own ramp, by what it shows. @param {Sheet[]} sheets @param {Sheet} sheet */
 function usualRamp(sheets, sheet) {
   const about = `${sheet.name} ${sheet.title} ${/** @type {any} */ (sheet).species ?? ''}`.toLowerCase();
-  if (sheet.kind === 'mean') return 'kelpfire';
+  if (sheet.weight) return 'kelpfire';
   if (/star|stellar/.test(about)) return 'starwort';
   if (/dark|dm\b/.test(about)) return 'undertow';
   if (/gas/.test(about)) return 'strandline';

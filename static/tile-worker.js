@@ -9,6 +9,7 @@ const PIXELS = SIDE * SIDE;
 const PATIENCE = 30000;
 
 /** @typedef {import('./atlas.js').Recipe} Recipe */
+/** @typedef {import('./coding.js').Coding} Coding */
 /**
  * A tile in hand: codes to colour and count, and the exact values where several slabs were combined.
  * @typedef {{codes: Uint16Array|null, values: Float32Array|null, shown: import('./coding.js').Coding}} Held
@@ -117,14 +118,15 @@ self.onmessage = ({ data }) => answers[/** @type {keyof typeof answers} */ (data
 
 /** @param {Recipe} recipe @param {AbortSignal} signal @param {boolean} fresh @returns {Promise<Held>} */
 async function make(recipe, signal, fresh) {
-  const { kind, coding, weightCoding, shown } = recipe;
-  const [tiles, weights] = await Promise.all([
-    Promise.all(recipe.tiles.map((address) => bring(address, signal, fresh))),
-    recipe.weights ? Promise.all(recipe.weights.map((address) => bring(address, signal, fresh))) : null,
-  ]);
+  const { kind, coding, weightCoding, meanCoding, shown } = recipe;
+  const all = (/** @type {string[]} */ addresses) => Promise.all(addresses.map((address) => bring(address, signal, fresh)));
+  const [tiles, weights, means] = await Promise.all([all(recipe.tiles), recipe.weights && all(recipe.weights), recipe.means && all(recipe.means)]);
   if (tiles.every((codes) => codes === null)) return { codes: null, values: null, shown };
   if (tiles.length === 1) return { codes: tiles[0], values: null, shown };
-  const values = kind === 'mean' ? mean(tiles, weights, coding, weightCoding) : sum(tiles, coding);
+  let values;
+  if (kind === 'sum') values = sum(tiles, coding);
+  else if (means && weights && meanCoding && weightCoding) values = dispersion(tiles, means, weights, coding, meanCoding, weightCoding);
+  else values = mean(tiles, weights, coding, weightCoding);
   return { codes: recode(values, shown), values, shown };
 }
 
@@ -179,6 +181,32 @@ function mean(tiles, weights, coding, weightCoding) {
     }
   });
   return Float32Array.from(above, (x, i) => (below[i] > 0 ? x / below[i] : NaN));
+}
+
+/**
+ * Dispersions s about means m, with weights w, make that about the common mean M: sqrt(sum w (s^2 + m^2) / sum w - M^2).
+ * @param {(Uint16Array|null)[]} tiles @param {(Uint16Array|null)[]} means @param {(Uint16Array|null)[]} weights
+ * @param {Coding} coding @param {Coding} meanCoding @param {Coding} weightCoding
+ */
+function dispersion(tiles, means, weights, coding, meanCoding, weightCoding) {
+  const [spread, middle, heavy] = [known(coding), known(meanCoding), known(weightCoding)];
+  const squares = new Float64Array(PIXELS);
+  const above = new Float64Array(PIXELS);
+  const below = new Float64Array(PIXELS);
+  means.forEach((about, k) => {
+    const [codes, weight] = [tiles[k], weights[k]];
+    if (!about || !weight) return;
+    for (let i = 0; i < PIXELS; i++) {
+      if (about[i] === 0) continue;
+      const w = heavy[weight[i]];
+      const m = middle[about[i]];
+      const s = codes ? spread[codes[i]] : 0;
+      squares[i] += w * (s * s + m * m);
+      above[i] += w * m;
+      below[i] += w;
+    }
+  });
+  return Float32Array.from(squares, (x, i) => (below[i] > 0 ? Math.sqrt(Math.max(x / below[i] - (above[i] / below[i]) ** 2, 0)) : NaN));
 }
 
 /** Codes to colour the combined values with. @param {Float32Array} values @param {import('./coding.js').Coding} coding */

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from copy import deepcopy
 from pathlib import Path
 
 import numpy as np
@@ -9,10 +10,11 @@ import pytest
 import yaml
 from build_maker import changed, description
 
-from tilemap.buildfile import loads
-from tilemap.channels import SpeciesPlan, describe_sheet, plan_species
+from tilemap.buildfile import BuildFile, loads
+from tilemap.channels import Plane, SpeciesPlan
 from tilemap.errors import InputError
 from tilemap.pyramid.coding import LinearCoding, LogCoding
+from tilemap.sheets import describe_sheet, plan_species
 from tilemap.sources import Chunk, open_source
 
 PIXEL_MPC = 0.5
@@ -22,8 +24,12 @@ def plans(tmp_path: Path, pixel: float = PIXEL_MPC, **values: object) -> list[Sp
     from build_maker import particles
 
     np.savez(tmp_path / "small.npz", **particles(20))
-    build = loads(yaml.safe_dump(changed(description(), **values), sort_keys=False), tmp_path / "small.yaml")
+    build = spec(tmp_path, **values)
     return plan_species(build, open_source(build), pixel)
+
+
+def spec(tmp_path: Path, **values: object) -> BuildFile:
+    return loads(yaml.safe_dump(changed(description(), **deepcopy(values)), sort_keys=False), tmp_path / "small.yaml")
 
 
 def chunk(count: int = 5, **values: np.ndarray) -> Chunk:
@@ -34,7 +40,7 @@ def chunk(count: int = 5, **values: np.ndarray) -> Chunk:
 
 def test_sheets_that_need_the_same_plane_share_it(tmp_path):
     (plan,) = plans(tmp_path)
-    assert plan.quantities == [("mass", None), ("mass", "temperature"), ("mass", "velocity")]
+    assert plan.quantities == [Plane("mass"), Plane("mass", "temperature"), Plane("mass", "velocity")]
     assert [(sheet.plane, sheet.weight) for sheet in plan.sheets] == [(0, None), (1, 0), (2, 0)]
 
 
@@ -184,12 +190,88 @@ def test_a_unit_that_does_not_fit_is_refused_with_one_that_does(tmp_path, values
 
 def test_the_description_of_a_sum_has_totals_and_that_of_a_mean_has_none(tmp_path):
     (plan,) = plans(tmp_path)
-    gas = describe_sheet(plan.sheets[0], LogCoding(-30.0), [1.0, 2.0])
-    mean = describe_sheet(plan.sheets[1], LogCoding(3.0), [1.0, 2.0])
+    gas = describe_sheet(spec(tmp_path), plan.sheets[0], LogCoding(-30.0), [1.0, 2.0])
+    mean = describe_sheet(spec(tmp_path), plan.sheets[1], LogCoding(3.0), [1.0, 2.0])
     assert (gas["kind"], gas["total"], gas["total_unit"], gas["totals"]) == ("sum", 3.0, "solMass", [1.0, 2.0])
     assert (mean["kind"], mean["weight"], mean["total"], mean["totals"]) == ("mean", "gas", None, None)
 
 
 def test_a_sheet_without_a_title_is_called_by_its_name(tmp_path):
     (plan,) = plans(tmp_path)
-    assert describe_sheet(plan.sheets[1], LogCoding(3.0), [])["title"] == "Temperature"
+    assert describe_sheet(spec(tmp_path), plan.sheets[1], LogCoding(3.0), [])["title"] == "Temperature"
+
+
+SPREAD = {"sheets__spread": {"species": "gas", "dispersion": "velocity", "unit": "km/s", "coding": "linear"}}
+
+
+def test_a_dispersion_draws_the_squares_besides_its_mean(tmp_path):
+    (plan,) = plans(tmp_path, **SPREAD)
+    assert plan.quantities[2:] == [Plane("mass", "velocity"), Plane("mass", "velocity", squared=True)]
+    spread = plan.sheets[3]
+    assert (spread.plane, spread.mean, spread.weight) == (3, 2, 0)
+
+
+def settled(tmp_path: Path, velocity: np.ndarray, **values: object) -> tuple[SpeciesPlan, np.ndarray]:
+    """A plan that has seen particles of these velocities and masses 1, 2, ...; the planes of all of them in one pixel."""
+    (plan,) = plans(tmp_path, **SPREAD | values)
+    some = chunk(len(velocity), velocity=velocity)
+    plan.settle(some)
+    planes, ranges = plan.planes(some)
+    plan.widen(ranges)
+    return plan, planes.sum(axis=0, dtype=np.float64).astype(np.float32)[:, None, None]
+
+
+def shown(plan: SpeciesPlan, sheet: int, planes: np.ndarray) -> float:
+    which = plan.sheets[sheet]
+    return float(plan.values(which, planes)[0, 0]) * plan.scale(which) * which.factor
+
+
+@pytest.mark.parametrize("bulk", [0.0, 300.0, -1e6])
+def test_mean_and_dispersion_are_those_that_numpy_gives_however_fast_all_move(tmp_path, bulk):
+    velocity = bulk + np.array([-30.0, 10.0, 25.0, -4.0, 7.0])
+    plan, planes = settled(tmp_path, velocity)
+    mean = np.average(velocity, weights=np.arange(1.0, 6))
+    spread = np.sqrt(np.average((velocity - mean) ** 2, weights=np.arange(1.0, 6)))
+    assert shown(plan, 2, planes) == pytest.approx(mean, rel=1e-6, abs=1e-4)
+    assert shown(plan, 3, planes) == pytest.approx(spread, rel=1e-5)
+
+
+def test_particles_of_one_velocity_have_no_dispersion_but_rounding(tmp_path):
+    plan, _ = settled(tmp_path, np.array([-300.0, 300.0]))
+    one = chunk(1, velocity=np.array([250.0]))
+    planes = plan.planes(one)[0].sum(axis=0)[:, None, None]
+    assert 0 <= shown(plan, 3, planes) <= plan.floor(plan.sheets[3]) < 1
+
+
+def test_a_dispersion_is_nothing_where_there_is_no_weight(tmp_path):
+    plan, planes = settled(tmp_path, np.array([-300.0, 300.0]))
+    assert np.isnan(plan.values(plan.sheets[3], np.zeros_like(planes))).all()
+
+
+def test_a_dispersion_in_another_unit_is_converted(tmp_path):
+    plan, planes = settled(tmp_path, np.array([-10.0, 10.0]), sheets__spread__unit="m/s", sheets__velocity__unit="m/s")
+    assert shown(plan, 3, planes) == pytest.approx(1000 * np.sqrt(100 - (10 / 3) ** 2), rel=1e-5)
+
+
+def test_the_description_of_a_dispersion_names_its_mean_its_weight_and_its_floor(tmp_path):
+    plan, _ = settled(tmp_path, np.array([-300.0, 300.0]))
+    build = spec(tmp_path, **SPREAD)
+    described = describe_sheet(build, plan.sheets[3], LinearCoding(0.0, 1.0), [], plan.floor(plan.sheets[3]))
+    assert (described["kind"], described["mean"], described["weight"]) == ("dispersion", "velocity", "gas")
+    assert described["floor"] == plan.floor(plan.sheets[3]) > 0
+    assert described["total"] is None
+
+
+@pytest.mark.parametrize(
+    ("values", "said"),
+    [
+        ({"dispersion": "speed"}, r"sheets\.spread\.dispersion: 'speed' is no sheet: .*velocity"),
+        ({"dispersion": "gas"}, r"sheets\.spread\.dispersion: 'gas' is not a mean of species 'gas'"),
+        ({"unit": "m/s"}, r"sheets\.spread\.unit is m/s: a dispersion has the unit of its mean sheet, km/s"),
+        ({"weight": "gas"}, "weight goes with mean; a dispersion has none of its own"),
+        ({"mean": "velocity"}, "dispersion: and that of a mean sheet, and no more than one"),
+    ],
+)
+def test_a_dispersion_that_is_about_nothing_is_refused(tmp_path, values, said):
+    with pytest.raises(InputError, match=said):
+        spec(tmp_path, sheets__spread=SPREAD["sheets__spread"] | values)

@@ -209,7 +209,8 @@ class Atlas:
             neither is given.
         slabs : int or slice, optional
             One slab, or those that the slice takes; counted from 0, negative from the end. All, where it is left out.
-            Slabs are summed; means are weighted by their weight sheet.
+            Slabs are summed; means are weighted by their weight sheet; dispersions are put together about the common
+            mean.
         pixels : int, optional
             Columns of the piece, so that a pixel is width / pixels each way. Values are then averages over the new
             pixels of the coarsest level that is at least as fine, each old pixel counting by the area they share: sums
@@ -362,12 +363,14 @@ class Atlas:
         self, sheet: dict[str, Any], epoch: str, level: int, slabs: tuple[int, ...], rows: Any, columns: Any
     ) -> NDArray[np.float32]:
         whole = len(slabs) == self.slab_count
-        coded = Coded(self.reader(epoch, sheet["name"], level, whole), Coding.from_attributes(sheet))
-        weight = None
-        if sheet["kind"] == "mean":
-            weigher = self.sheet(sheet["weight"], epoch)
-            weight = Coded(self.reader(epoch, weigher["name"], level, whole), Coding.from_attributes(weigher))
-        return combine(coded, weight, (0,) if whole else slabs, rows, columns)
+
+        def coded(described: dict[str, Any]) -> Coded:
+            return Coded(self.reader(epoch, described["name"], level, whole), Coding.from_attributes(described))
+
+        weight, mean = (
+            coded(self.sheet(sheet[role], epoch)) if sheet.get(role) else None for role in ("weight", "mean")
+        )
+        return combine(coded(sheet), weight, (0,) if whole else slabs, rows, columns, mean)
 
     def _piece(
         self, values: NDArray[np.float32], sheet: dict[str, Any], epoch: str, slabs: tuple[int, ...], window: _Window

@@ -19,7 +19,7 @@ from typing import Any
 
 from tilemap import buildfile
 from tilemap.buildfile import BuildFile
-from tilemap.channels import Report, plan_species
+from tilemap.channels import Report
 from tilemap.cosmology import scale_factor
 from tilemap.draw import SpeciesDrawing
 from tilemap.errors import InputError
@@ -31,6 +31,7 @@ from tilemap.pyramid.publish import FORMAT, check_target, file_sha256, publish
 from tilemap.pyramid.store import create_group
 from tilemap.quantities import span
 from tilemap.runners.local import LocalRunner
+from tilemap.sheets import plan_species
 from tilemap.sizes import byte_count
 from tilemap.sources import Facts, Source, open_source
 

@@ -10,7 +10,7 @@ import pydantic
 import yaml
 
 from tilemap.errors import InputError
-from tilemap.quantities import suggestion
+from tilemap.quantities import suggestion, unit_named
 
 if TYPE_CHECKING:
     from tilemap.buildfile import BuildFile, Sheet
@@ -121,8 +121,22 @@ def _check_sheet(build: BuildFile, name: str, sheet: Sheet) -> None:
     if species is None:
         near = suggestion(sheet.species, build.snapshot.species)
         raise InputError(f"{here}.species: no species {sheet.species!r} in snapshot.species: {near}")
-    kind = "sum" if sheet.sum is not None else "mean"
-    quantity = str(sheet.sum if sheet.sum is not None else sheet.mean)
+    kind = sheet.kind
+    if kind == "dispersion":
+        means = [
+            other for other, each in build.sheets.items() if each.mean is not None and each.species == sheet.species
+        ]
+        if sheet.dispersion not in means:
+            what = (
+                "is no sheet" if sheet.dispersion not in build.sheets else f"is not a mean of species {sheet.species!r}"
+            )
+            near = suggestion(str(sheet.dispersion), means) if means else "add one, such as mean: velocity"
+            raise InputError(f"{here}.dispersion: {sheet.dispersion!r} {what}: {near}")
+        unit = build.sheets[sheet.dispersion].unit
+        if unit_named(sheet.unit) != unit_named(unit):
+            raise InputError(f"{here}.unit is {sheet.unit}: a dispersion has the unit of its mean sheet, {unit}")
+        return
+    quantity = str(getattr(sheet, kind))
     known = [*species.fields, "mass", "count"]
     if quantity not in known:
         raise InputError(

@@ -6,107 +6,39 @@ How a mistake is put into a sentence is in `buildcheck`.
 
 from __future__ import annotations
 
-import itertools
+from functools import cached_property
 from pathlib import Path
 from typing import Annotated, Any, Literal
 
 import astropy.units as u
+import numpy as np
 import pydantic
 import yaml
-from pydantic import BaseModel, BeforeValidator, ConfigDict, PrivateAttr, ValidationInfo
+from numpy.typing import NDArray
+from pydantic import BaseModel, ConfigDict, PrivateAttr
 
 from tilemap.buildcheck import BuildLoader, check_whole, sentence
+from tilemap.buildvalues import (
+    Box,
+    Centre,
+    Direction,
+    KernelName,
+    MassNumber,
+    Name,
+    Pixels,
+    PositiveLength,
+    Slabs,
+    Texts,
+    UnitText,
+)
 from tilemap.errors import InputError
-from tilemap.quantities import nearest, number_in, split_quantity, unit_named
+from tilemap.project.camera import AXES
+from tilemap.quantities import split_quantity, unit_named
 
-KERNEL_NAMES = ("cubic", "quartic", "quintic", "wendland-c2", "wendland-c4", "wendland-c6")
-TILE = 512
-
-
-def _length(value: Any, info: ValidationInfo) -> float:
-    unit: u.UnitBase = (info.context or {}).get("unit", u.Mpc)
-    return _sayable(number_in, value, unit, "length" if unit.is_equivalent(u.Mpc) else "angle")
-
-
-def _positive_length(value: Any, info: ValidationInfo) -> float:
-    number = _length(value, info)
-    if number <= 0:
-        raise ValueError(f"{value!r}: it must be above zero")
-    return number
-
-
-def _mass(value: Any) -> float:
-    number = _sayable(number_in, value, u.Msun, "mass")
-    if number < 0:
-        raise ValueError(f"{value!r}: a mass may not be negative")
-    return number
-
-
-def _unit_text(value: Any) -> Any:
-    if isinstance(value, str):
-        _sayable(unit_named, value)
-    return value
-
-
-def _sayable(function: Any, *arguments: Any) -> Any:
-    """Call, with InputError turned into the ValueError that pydantic collects together with the key path."""
-    try:
-        return function(*arguments)
-    except InputError as error:
-        raise ValueError(str(error)) from error
-
-
-def _kernel(value: Any) -> Any:
-    if value not in KERNEL_NAMES:
-        close = nearest(str(value), KERNEL_NAMES)
-        hint = f"the nearest is {close!r}; " if close else ""
-        raise ValueError(f"unknown kernel {value!r}: {hint}the kernels are {', '.join(KERNEL_NAMES)}")
-    return value
-
-
-def _one_or_more(value: Any) -> Any:
-    return [value] if isinstance(value, str | int | float) else value
-
-
-def _box(value: Any, info: ValidationInfo) -> Any:
-    sides = value if isinstance(value, list | tuple) else [value] * 3
-    if len(sides) != 3:
-        raise ValueError(f"{len(sides)} sides are given: a box has one length or three")
-    return tuple(_positive_length(side, info) for side in sides)
-
-
-def _centre(value: Any, info: ValidationInfo) -> Any:
-    if not isinstance(value, list | tuple) or len(value) not in (2, 3):
-        raise ValueError(f"{value!r}: write three lengths, [x, y, z], or two for a flat chart")
-    return tuple(_length(number, info) for number in [*value, 0.0][:3])
-
-
-def _slabs(value: Any, info: ValidationInfo) -> Any:
-    if isinstance(value, list | tuple):
-        edges = tuple(_length(edge, info) for edge in value)
-        if len(edges) < 2:
-            raise ValueError("a list of slab edges needs at least two of them")
-        for lower, upper in itertools.pairwise(edges):
-            if upper <= lower:
-                raise ValueError(f"slab edges must increase, but {upper:g} follows {lower:g}")
-        return edges
-    if isinstance(value, bool) or not isinstance(value, int) or value < 1:
-        raise ValueError(f"{value!r}: write a count of slabs (1 or more) or a list of increasing depth edges")
-    return value
-
-
-def _pixels(value: Any) -> Any:
-    if isinstance(value, bool) or not isinstance(value, int):
-        raise ValueError(f"{value!r}: write a whole number of pixels, a multiple of {TILE}")
-    if value < TILE or value % TILE:
-        raise ValueError(f"{value} is not a multiple of {TILE}: the nearest is {max(1, round(value / TILE)) * TILE}")
-    return value
-
-
-Length = Annotated[float, BeforeValidator(_length)]
-PositiveLength = Annotated[float, BeforeValidator(_positive_length)]
-UnitText = Annotated[str, BeforeValidator(_unit_text)]
-Name = Annotated[str, pydantic.Field(pattern=r"^[A-Za-z0-9][A-Za-z0-9._-]*$")]
+DERIVED = ("temperature_from", "density_squared_from", "line_of_sight")
+"""Keys of a field that is worked out from datasets; the formulas are in `sources.derived`."""
+KINDS = ("sum", "mean", "dispersion")
+"""Keys of a sheet that say what it shows."""
 
 
 class _Keys(BaseModel):
@@ -114,18 +46,22 @@ class _Keys(BaseModel):
 
 
 class Field(_Keys):
-    """Where numbers lie: a dataset (or column, or several), with what the file does not say about its unit.
+    """Where numbers lie: a dataset (or column, or several), with what the file does not say about its unit; or what
+    they are worked out from.
 
-    Exactly one of `dataset` and `temperature_from` is set.
+    Exactly one of `dataset` and the `DERIVED` keys is set.
     """
 
-    dataset: Annotated[list[str], BeforeValidator(_one_or_more)] | None = None
+    dataset: Texts | None = None
     unit: UnitText | None = None
     a: float | None = None
     h: float | None = None
     column: Annotated[int, pydantic.Field(ge=0)] | None = None
     temperature_from: Field | None = None
     gas: Literal["ionised", "neutral"] | None = None
+    electrons: Field | None = None
+    density_squared_from: Field | None = None
+    line_of_sight: Field | None = None
 
     @pydantic.model_validator(mode="before")
     @classmethod
@@ -138,18 +74,21 @@ class Field(_Keys):
         return self
 
     def _check_kind(self) -> None:
-        if (self.dataset is None) == (self.temperature_from is None):
-            raise ValueError("name a dataset, or temperature_from, and not both")
+        if sum(getattr(self, key) is not None for key in ("dataset", *DERIVED)) != 1:
+            raise ValueError(f"name a dataset, or one of {', '.join(DERIVED)}, and no more than one")
         if self.dataset is not None and not 1 <= len(self.dataset) <= 3:
             raise ValueError(f"{len(self.dataset)} datasets are named: give one, or two or three for a position")
-        if self.gas is not None and self.temperature_from is None:
-            raise ValueError("gas: ionised or neutral goes with temperature_from only")
+        for key in ("gas", "electrons"):
+            if getattr(self, key) is not None and self.temperature_from is None:
+                raise ValueError(f"{key} goes with temperature_from only")
+        if self.gas is not None and self.electrons is not None:
+            raise ValueError("electrons already say how far the gas is ionised: leave gas out")
 
 
 class Mass(Field):
     """The mass of a species: a field, one constant in Msun for every particle, or an entry of the header's MassTable."""
 
-    constant: Annotated[float, BeforeValidator(_mass)] | None = None
+    constant: MassNumber | None = None
     table: Annotated[int, pydantic.Field(ge=0)] | None = None
 
     @pydantic.model_validator(mode="before")
@@ -160,8 +99,8 @@ class Mass(Field):
         return value
 
     def _check_kind(self) -> None:
-        given = [key for key in ("dataset", "constant", "table", "temperature_from") if getattr(self, key) is not None]
-        if len(given) != 1 or given == ["temperature_from"]:
+        given = [key for key in ("dataset", "constant", "table", *DERIVED) if getattr(self, key) is not None]
+        if len(given) != 1 or given[0] in DERIVED:
             raise ValueError("a mass is one dataset, or one constant such as 1.5e6 Msun, or {table: 1}")
         if self.dataset is not None and len(self.dataset) != 1:
             raise ValueError("a mass comes from one dataset")
@@ -174,7 +113,7 @@ class Smoothing(_Keys):
     means: Literal["support", "half", "fwhm"] | None = None
     neighbours: Annotated[int, pydantic.Field(ge=1)] | None = None
     radius: PositiveLength | None = None
-    kernel: Annotated[str, BeforeValidator(_kernel)] = "cubic"
+    kernel: KernelName = "cubic"
 
     @pydantic.model_validator(mode="after")
     def _one_way(self) -> Smoothing:
@@ -216,9 +155,9 @@ class CosmologyKeys(_Keys):
 class Snapshot(_Keys):
     """The particle files and what they hold."""
 
-    files: Annotated[list[str], BeforeValidator(_one_or_more), pydantic.Field(min_length=1)]
+    files: Annotated[Texts, pydantic.Field(min_length=1)]
     kind: Literal["hdf5", "arrays", "table"] | None = None
-    box: Annotated[tuple[float, float, float], BeforeValidator(_box)] | None = None
+    box: Box | None = None
     periodic: bool | None = None
     redshift: Annotated[float, pydantic.Field(gt=-1)] | None = None
     cosmology: CosmologyKeys | None = None
@@ -226,16 +165,43 @@ class Snapshot(_Keys):
 
 
 class View(_Keys):
-    """What is drawn: lengths in `unit`; None where the box decides."""
+    """What is drawn: lengths in `unit`; None where the box decides. Without `along` and `toward` it is along z."""
 
-    along: Literal["x", "y", "z"] = "z"
-    centre: Annotated[tuple[float, float, float], BeforeValidator(_centre)] | None = None
+    along: Literal["x", "y", "z"] | None = None
+    toward: Direction | None = None
+    up: Direction | None = None
+    centre: Centre | None = None
     width: PositiveLength | None = None
     height: PositiveLength | None = None
     depth: PositiveLength | None = None
-    pixels: Annotated[int, BeforeValidator(_pixels)] = 4096
-    slabs: Annotated[int | tuple[float, ...], BeforeValidator(_slabs)] = 1
+    pixels: Pixels = 4096
+    slabs: Slabs = 1
     unit: UnitText = "Mpc"
+
+    @pydantic.model_validator(mode="after")
+    def _one_camera(self) -> View:
+        if self.toward is None:
+            if self.up is not None:
+                raise ValueError("up goes with toward: say both")
+            return self
+        if self.along is not None:
+            raise ValueError("along and toward both say the line of sight: leave one of the two out")
+        if self.up is not None and np.linalg.norm(np.cross(self.toward, self.up)) < 1e-6:
+            raise ValueError("up lies along the line of sight: give a direction across it")
+        return self
+
+    @cached_property
+    def vectors(self) -> NDArray[np.float64]:
+        """Unit vectors, in x, y and z, along which u, v and depth grow: (3, 3), right-handed, one in each row."""
+        if self.toward is None:
+            return np.eye(3)[list(AXES[self.along or "z"])]
+        depth = np.array(self.toward)
+        # Up is z where nothing is said, and y where that is the line of sight.
+        ups = [self.up] if self.up is not None else [(0.0, 0.0, 1.0), (0.0, 1.0, 0.0)]
+        up = next(each for each in ups if np.linalg.norm(np.cross(each, depth)) >= 1e-6)
+        across = np.cross(up, depth)
+        across /= np.linalg.norm(across)
+        return np.array([across, np.cross(depth, across), depth]) + 0.0  # no negative zeros
 
     @property
     def flat(self) -> bool:
@@ -244,26 +210,38 @@ class View(_Keys):
 
 
 class Sheet(_Keys):
-    """One projected quantity: exactly one of `sum` and `mean` names it."""
+    """One projected quantity: exactly one of the `KINDS` names it.
+
+    `sum` and `mean` name a field, mass or count; `dispersion` a mean sheet, about whose values it is the spread.
+    """
 
     title: str | None = None
     species: str
     sum: str | None = None
     mean: str | None = None
+    dispersion: str | None = None
     weight: str | None = None
     unit: UnitText
     coding: Literal["log", "linear"] = "log"
     step: Annotated[float, pydantic.Field(gt=0)] | None = None
     area: Literal["comoving", "proper"] = "comoving"
 
+    @property
+    def kind(self) -> str:
+        """Which of the `KINDS` it is."""
+        return next(kind for kind in KINDS if getattr(self, kind) is not None)
+
     @pydantic.model_validator(mode="after")
     def _one_kind(self) -> Sheet:
-        if (self.sum is None) == (self.mean is None):
-            raise ValueError("give sum: or mean: and the name of a field, mass or count, and not both")
+        if sum(getattr(self, kind) is not None for kind in KINDS) != 1:
+            raise ValueError(
+                "give sum: or mean: and the name of a field, mass or count, or dispersion: and that of a mean sheet, "
+                "and no more than one"
+            )
         if self.mean is not None and self.weight is None:
             raise ValueError("a mean needs weight: the name of a sum sheet of the same species")
-        if self.sum is not None and self.weight is not None:
-            raise ValueError("weight goes with mean; a sum has none")
+        if self.mean is None and self.weight is not None:
+            raise ValueError(f"weight goes with mean; a {self.kind} has none of its own")
         return self
 
 

@@ -1,7 +1,7 @@
-"""Sheets in, planes to draw out; and back: how the planes of a species become the values of its sheets.
+"""Particles in, what they add to planes out; and back: how the planes of a species become the values of its sheets.
 
 A sum is one plane. A mean is two, its numerator and its weight, kept apart until they are divided, last and at every
-level. Sheets that need the same plane share it.
+level; a dispersion has the numerator of the squares besides. Sheets that need the same plane share it.
 """
 
 from __future__ import annotations
@@ -9,16 +9,17 @@ from __future__ import annotations
 import math
 from collections.abc import Callable
 from dataclasses import dataclass, field
-from typing import Any
 
-import astropy.units as u
 import numpy as np
 from numpy.typing import NDArray
 
-from tilemap.buildfile import BuildFile, Sheet
+from tilemap.buildfile import Sheet
 from tilemap.errors import InputError
 from tilemap.pyramid.coding import Coding, LinearCoding, LogCoding
-from tilemap.sources import Chunk, Source
+from tilemap.sources import Chunk
+
+Report = Callable[[str, float, float], None]
+"""Told of progress: (phase, done, total)."""
 
 LOG_ROOM_DEX = 40.0
 """How far below the mean of a log sheet its lowest code lies; at step 0.002 there are 91 dex above. Nothing that a
@@ -27,6 +28,18 @@ LINEAR_STEPS = 65000
 LARGEST_BITS = 30
 """The largest of the first particles adds about 2^30 to a plane: single precision then holds 10^29 times as much, and
 10^-47 of it. A luminosity in erg/s as it is would be past its end."""
+FLOOR = 2e-3
+"""A dispersion is the small difference of two large numbers: below this share of the largest value, counted from near
+the mean of all, single precision is what one sees."""
+
+
+@dataclass(frozen=True)
+class Plane:
+    """One image that is drawn: the sum of an extensive field, times the averaged field or its square where there is one."""
+
+    extensive: str
+    averaged: str | None = None
+    squared: bool = False
 
 
 @dataclass(frozen=True)
@@ -38,13 +51,15 @@ class SheetPlan:
     name : str
     sheet : Sheet
     plane : int
-        The sum, or the numerator of the mean.
+        The sum, or the numerator of the mean, or that of the mean of squares.
     weight : int or None
         The plane that a mean is divided by.
     factor : float
         From plane per pixel to the sheet's unit.
     total_unit : str
         Unit of the plane's own sum: what `totals` are in.
+    mean : int or None
+        For a dispersion, the numerator of the mean that it is about.
     """
 
     name: str
@@ -53,6 +68,7 @@ class SheetPlan:
     weight: int | None
     factor: float
     total_unit: str
+    mean: int | None = None
 
     def of_planes(self, coding: Coding, scale: float) -> Coding:
         """The coding that gives `values` the codes that `coding` gives the same in the sheet's unit."""
@@ -78,23 +94,29 @@ class SpeciesPlan:
     Attributes
     ----------
     species : str
-    quantities : list of (str, str or None)
-        For each plane what is summed: (extensive field, None), or (weight field, averaged field).
+    quantities : list of Plane
     sheets : list of SheetPlan
     ranges : float64 (planes, 2)
         Smallest and largest value of the averaged field, over particles of positive weight, or of the summed one;
         filled while reading. Masses and counts, which are not negative, are left out.
     scales : float64 (planes,)
         Powers of two that planes are divided by, so that single precision holds what is in them; see `settle`.
+    shifts : float64 (planes,)
+        What is taken off the averaged field where a dispersion is wanted, so that little cancels; see `settle`.
     """
 
     species: str
-    quantities: list[tuple[str, str | None]]
+    quantities: list[Plane]
     sheets: list[SheetPlan]
     ranges: NDArray[np.float64] = field(default_factory=lambda: np.empty((0, 2)))
     scales: NDArray[np.float64] = field(default_factory=lambda: np.empty(0))
+    shifts: NDArray[np.float64] = field(default_factory=lambda: np.empty(0))
 
     def __post_init__(self) -> None:
+        self.shifts = np.zeros(len(self.quantities))
+        self._shifted: dict[tuple[str, str | None], bool] = {
+            (plane.extensive, plane.averaged): False for plane in self.quantities if plane.squared
+        }
         self.ranges = np.tile([np.inf, -np.inf], (len(self.quantities), 1))
         self.scales = np.ones(len(self.quantities))
         self._settled = np.zeros(len(self.quantities), dtype=bool)
@@ -102,44 +124,90 @@ class SpeciesPlan:
     @property
     def fields(self) -> list[str]:
         """The fields to read, mass and count left out."""
-        names = {name for pair in self.quantities for name in pair if name not in (None, "mass", "count")}
-        return sorted(str(name) for name in names)
+        names = {name for plane in self.quantities for name in (plane.extensive, plane.averaged)}
+        return sorted(str(name) for name in names - {None, "mass", "count"})
 
     def settle(self, chunk: Chunk) -> None:
-        """Settle the scales by the first chunk that is not zero; call before `planes`, from one thread.
+        """Settle scales and shifts by the first chunk that is not zero; call before `planes`, from one thread.
 
-        Powers of two change no bit of what is drawn, so the chunk does not matter.
+        Powers of two change no bit of what is drawn, so the chunk does not matter. A shift is the chunk's mean, rounded
+        so coarsely that most chunks would give the same.
         """
+        for pair in [pair for pair, settled in self._shifted.items() if not settled]:
+            self._settle_shift(chunk, *pair)
         for plane in map(int, np.flatnonzero(~self._settled)):
             largest = np.abs(self._amount(chunk, plane)[0]).max(initial=0.0)
             if 0 < largest < np.inf:
                 self.scales[plane] = 2.0 ** (math.frexp(largest)[1] - LARGEST_BITS)
                 self._settled[plane] = True
 
+    def _settle_shift(self, chunk: Chunk, extensive: str, averaged: str | None) -> None:
+        weight, value = _field(chunk, extensive), _field(chunk, str(averaged))
+        if not weight.sum() > 0:
+            return
+        mean = float(np.average(value, weights=weight))
+        spread = math.sqrt(float(np.average((value - mean) ** 2, weights=weight)))
+        grain = 2.0 ** (math.frexp(spread)[1] - 1) if spread > 0 else 0.0
+        shift = round(mean / grain) * grain if grain else mean
+        for number, plane in enumerate(self.quantities):
+            if (plane.extensive, plane.averaged) == (extensive, averaged):
+                self.shifts[number] = shift
+        self._shifted[extensive, averaged] = True
+
     def scale(self, sheet: SheetPlan) -> float:
         """What the sheet's `values` have to be multiplied by, besides its factor."""
         below = 1.0 if sheet.weight is None else self.scales[sheet.weight]
-        return float(self.scales[sheet.plane] / below)
+        return float(self.scales[sheet.plane if sheet.mean is None else sheet.mean] / below)
+
+    def floor(self, sheet: SheetPlan) -> float | None:
+        """For a dispersion, what is not to be told from zero, in the sheet's unit."""
+        if sheet.mean is None or not np.isfinite(self.ranges[sheet.mean]).all():
+            return None
+        return float(FLOOR * np.abs(self.ranges[sheet.mean] - self.shifts[sheet.mean]).max() * sheet.factor)
 
     def values(self, sheet: SheetPlan, planes: NDArray[np.float32]) -> NDArray[np.float32]:
         """What is coded of a sheet: its `values`, means held to the range of what they average.
 
         They cannot leave it but by rounding: two planes divided are good to 1e-6, and a range may be narrower.
         """
+        if sheet.mean is not None:
+            return self._spread(sheet, sheet.mean, planes)
         values = sheet.values(planes)
         if sheet.weight is None:
             return values
-        low, high = (self.ranges[sheet.plane] / self.scale(sheet)).astype(np.float32)
+        scale = self.scale(sheet)
+        if self.shifts[sheet.plane]:
+            values += np.float32(self.shifts[sheet.plane] / scale)
+        low, high = (self.ranges[sheet.plane] / scale).astype(np.float32)
         return np.clip(values, low, high, out=values)
+
+    def _spread(self, sheet: SheetPlan, mean: int, planes: NDArray[np.float32]) -> NDArray[np.float32]:
+        """The square root of the mean of squares less the square of the mean, in units of the mean's plane."""
+        assert sheet.weight is not None
+        weight = planes[sheet.weight]
+        there = weight > 0
+        first = np.divide(planes[mean], weight, out=np.full(weight.shape, np.nan, dtype=np.float32), where=there)
+        values = np.divide(planes[sheet.plane], weight, out=np.zeros(weight.shape, dtype=np.float32), where=there)
+        # A product of powers of two: exact.
+        values *= np.float32(self.scales[sheet.plane] * self.scales[sheet.weight] / self.scales[mean] ** 2)
+        values -= first * first
+        # No more than half the range lies between a value and the mean (Popoviciu 1935, Mathematica 9, 129).
+        most = np.float32(self._half_range(sheet) / self.scale(sheet))
+        return np.minimum(np.sqrt(np.maximum(values, 0, out=values), out=values), most, out=values)
+
+    def _half_range(self, sheet: SheetPlan) -> float:
+        low, high = self.ranges[sheet.plane]
+        return float((high - low) / 2) if np.isfinite(high - low) else 0.0
 
     def _amount(self, chunk: Chunk, plane: int) -> tuple[NDArray[np.float64], NDArray[np.float64] | None]:
         """What each particle adds to a plane, unscaled; and the values whose range matters."""
-        extensive, averaged = self.quantities[plane]
-        amount = _field(chunk, extensive)
-        if averaged is None:
-            return amount, None if extensive in ("mass", "count") else amount
-        value = _field(chunk, averaged)
-        return amount * value, value[amount > 0]
+        what = self.quantities[plane]
+        amount = _field(chunk, what.extensive)
+        if what.averaged is None:
+            return amount, None if what.extensive in ("mass", "count") else amount
+        value = _field(chunk, what.averaged)
+        shifted = value - self.shifts[plane] if self.shifts[plane] else value
+        return amount * (shifted**2 if what.squared else shifted), value[amount > 0]
 
     def planes(self, chunk: Chunk) -> tuple[NDArray[np.float32], NDArray[np.float64]]:
         """What each particle adds to each plane, float32 (n, planes); and the ranges met, float64 (planes, 2)."""
@@ -172,6 +240,11 @@ class SpeciesPlan:
             Where a log sheet has negative values, or a linear sum has no step.
         """
         sheet, low_high = plan.sheet, self.ranges[plan.plane] * plan.factor
+        if plan.mean is not None:
+            half = self._half_range(plan) * plan.factor
+            if sheet.coding == "log":
+                return LogCoding(_floor_log(half * 1e-6), sheet.step or 0.002, nothing=math.nan)
+            return LinearCoding(0.0, sheet.step or half / LINEAR_STEPS or 1.0)
         if sheet.coding == "log":
             step = sheet.step or 0.002
             if self.ranges[plan.plane, 0] < 0:
@@ -203,90 +276,3 @@ def _field(chunk: Chunk, name: str) -> NDArray[np.float64]:
     if name == "count":
         return np.ones(len(chunk))
     return chunk.values[name]
-
-
-def plan_species(build: BuildFile, source: Source, pixel: float) -> list[SpeciesPlan]:
-    """One plan for each species that a sheet draws, in the order of the build file.
-
-    Parameters
-    ----------
-    build : BuildFile
-    source : Source
-    pixel : float
-        Side of a pixel in the view's unit.
-
-    Raises
-    ------
-    InputError
-        Where a sheet's unit does not fit what it projects.
-    """
-    plans = []
-    names = dict.fromkeys(sheet.species for sheet in build.sheets.values())
-    for species in names:
-        sheets = {name: sheet for name, sheet in build.sheets.items() if sheet.species == species}
-        quantities: list[tuple[str, str | None]] = []
-
-        def plane(pair: tuple[str, str | None], quantities: list[tuple[str, str | None]] = quantities) -> int:
-            if pair not in quantities:
-                quantities.append(pair)
-            return quantities.index(pair)
-
-        made = []
-        for name, sheet in sheets.items():
-            if sheet.sum is not None:
-                number, weight = plane((sheet.sum, None)), None
-            else:
-                weighting = build.sheets[str(sheet.weight)].sum
-                assert weighting is not None and sheet.mean is not None
-                weight, number = plane((weighting, None)), plane((weighting, sheet.mean))
-            factor, total_unit = _factor(build, source, name, sheet, pixel)
-            made.append(SheetPlan(name, sheet, number, weight, factor, total_unit))
-        plans.append(SpeciesPlan(species, quantities, made))
-    return plans
-
-
-def _factor(build: BuildFile, source: Source, name: str, sheet: Sheet, pixel: float) -> tuple[float, str]:
-    unit = u.Unit(sheet.unit)
-    plain = source.unit(sheet.species, str(sheet.sum or sheet.mean))
-    per = plain
-    if sheet.sum is not None:
-        side = pixel * u.Unit(build.view.unit)
-        if sheet.area == "proper":
-            redshift = source.facts.redshift
-            if redshift is None:
-                raise InputError(f"sheet {name}: area is proper, and the redshift is not known: give snapshot.redshift")
-            side = side / (1.0 + redshift)
-        per = plain / side**2
-    try:
-        factor = float((1.0 * per).to_value(unit))
-    except u.UnitConversionError:
-        area = "kpc2" if not build.view.flat else f"{build.view.unit}2"
-        named = str(plain) or "no unit of its own"
-        raise InputError(
-            f"{build.path}: sheets.{name}.unit is {sheet.unit}: {sheet.sum or sheet.mean} of {sheet.species} has {named}, "
-            + (f"so a sum needs one such as {plain / u.Unit(area)}" if sheet.sum else "or one like it: write that, ")
-            + ("" if sheet.sum else f"or say in snapshot.species.{sheet.species}.fields what unit the field is in")
-        ) from None
-    return factor, str(plain) if plain != u.dimensionless_unscaled else ""
-
-
-Report = Callable[[str, float, float], None]
-
-
-def describe_sheet(plan: SheetPlan, coding: Coding, totals: list[float]) -> dict[str, Any]:
-    """The entry of a sheet in atlas.json, without what only the finished pyramid knows (percentiles and range)."""
-    sheet = plan.sheet
-    return {
-        "name": plan.name,
-        "title": sheet.title or plan.name.replace("_", " ").replace("-", " ").capitalize(),
-        "kind": "sum" if plan.weight is None else "mean",
-        "species": sheet.species,
-        "quantity": sheet.sum or sheet.mean,
-        "weight": sheet.weight,
-        **coding.attributes(),
-        "unit": u.Unit(sheet.unit).to_string(),
-        "area": sheet.area,
-        "total": sum(totals) if plan.weight is None else None,
-        "total_unit": plan.total_unit if plan.weight is None else None,
-        "totals": totals if plan.weight is None else None,
-    }

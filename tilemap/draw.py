@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tilemap.buildfile import BuildFile
-from tilemap.channels import Report, SheetPlan, SpeciesPlan, describe_sheet
+from tilemap.channels import Report, SheetPlan, SpeciesPlan
 from tilemap.errors import InputError
 from tilemap.project.camera import Camera
 from tilemap.project.scatter import Buckets, Plan
@@ -25,6 +25,7 @@ from tilemap.pyramid.grid import TILE
 from tilemap.pyramid.reduce import halve, plane_sums
 from tilemap.pyramid.writer import WHOLE, SheetWriter
 from tilemap.runners.local import LocalRunner
+from tilemap.sheets import describe_sheet
 from tilemap.sources import Chunk, Source
 
 CHUNK = 1 << 20
@@ -58,7 +59,7 @@ class SpeciesDrawing:
         runner: LocalRunner,
         report: Report,
     ) -> None:
-        self.source, self.camera, self.plan, self.planes = source, camera, plan, planes
+        self.build, self.source, self.camera, self.plan, self.planes = build, source, camera, plan, planes
         self.runner, self.report = runner, report
         self.smoothing = build.snapshot.species[planes.species].smoothing
         self.buckets = Buckets(camera, plan)
@@ -138,7 +139,8 @@ class SpeciesDrawing:
         entries = []
         for sheet, coding, writer in zip(sheets, codings, writers, strict=True):
             plane_totals = totals[:, sheet.plane] * self.planes.scales[sheet.plane]
-            entry = describe_sheet(sheet, coding, [float(total) for total in plane_totals])
+            totals_here = [float(total) for total in plane_totals]
+            entry = describe_sheet(self.build, sheet, coding, totals_here, self.planes.floor(sheet))
             entry |= self._summary(sheet, coarse[-1])
             writer.close(entry)
             entries.append(entry)

@@ -24,7 +24,8 @@ def make_camera(build: BuildFile, facts: Facts) -> Camera:
         Where the view is not given and no box says what it is, or where it cannot be cut into pixels and slabs.
     """
     view, where = build.view, f"{build.path}: view"
-    axes = AXES[view.along]
+    along = view.along or "z"
+    axes = AXES[along]
     box = None if facts.box is None else np.asarray(facts.box, dtype=np.float64)[list(axes)]
     if box is None and (view.centre is None or view.width is None):
         raise InputError(f"{where}: the files name no box, so centre and width must be given")
@@ -49,7 +50,7 @@ def make_camera(build: BuildFile, facts: Facts) -> Camera:
             "mass would count twice"
         )
     return Camera(
-        along=view.along,
+        along=along,
         u_low=float(centre[0] - width / 2),
         v_high=float(centre[1] + height / 2),
         pixel=float(pixel),

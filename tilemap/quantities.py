@@ -23,6 +23,7 @@ KINDS: dict[str, tuple[u.UnitBase, str]] = {
     "mass": (u.Msun, "Msun"),
     "angle": (u.deg, "deg"),
     "specific energy": (u.km**2 / u.s**2, "km2/s2"),
+    "density": (u.g / u.cm**3, "g/cm3"),
 }
 
 _HUBBLE = re.compile(r"(?<![A-Za-z_])(h|little_?h)(?![A-Za-z_])")

@@ -8,7 +8,8 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from tilemap.buildfile import KERNEL_NAMES, load, loads
+from tilemap.buildfile import load, loads
+from tilemap.buildvalues import KERNEL_NAMES
 from tilemap.errors import InputError
 from tilemap.project.kernels import KERNELS
 
@@ -98,7 +99,7 @@ MISTAKES = [
     ),
     ("title: T", "titel: T", "titel: unknown key 'titel': the nearest known is 'title'"),
     ("weight: gas", "wieght: gas", "sheets.temperature.wieght: unknown key 'wieght': the nearest known is 'weight'"),
-    ("slabs: 4", "slices: 4", "view.slices: unknown key 'slices': known here: along, centre, width"),
+    ("slabs: 4", "slices: 4", "view.slices: unknown key 'slices': known here: along, toward, up, centre"),
     ("rank: m", "order: m", "catalogue.order: unknown key 'order': known here: file, position"),
     ("title: T\n", "", "title: this key is missing"),
     ("rank: m", "id: m", "catalogue.rank: this key is missing"),
@@ -174,9 +175,21 @@ MISTAKES = [
         "temperature: {temperature_from: G/U, gas: cold}",
         "'cold' is not one of ionised or neutral",
     ),
-    ("temperature: G/Temperature", "temperature: {unit: K}", "name a dataset, or temperature_from"),
+    ("temperature: G/Temperature", "temperature: {unit: K}", "name a dataset, or one of temperature_from"),
+    ("temperature: G/Temperature", "t: {temperature_from: G/U, line_of_sight: G/V}", "and no more than one"),
+    ("temperature: G/Temperature", "t: {line_of_sight: G/V, gas: ionised}", "gas goes with temperature_from only"),
+    (
+        "temperature: G/Temperature",
+        "t: {temperature_from: G/U, gas: neutral, electrons: G/E}",
+        "electrons already say how far the gas is ionised: leave gas out",
+    ),
+    ("slabs: 4", "toward: [0, 0]", "view.toward: [0, 0]: write a direction as three numbers, [x, y, z]"),
+    ("slabs: 4", "toward: [0, 0, 0]", "view.toward: [0, 0, 0] is no direction"),
+    ("slabs: 4", "up: [0, 0, 1]", "view: up goes with toward: say both"),
+    ("slabs: 4", "along: z, toward: [0, 0, 1]", "view: along and toward both say the line of sight"),
+    ("slabs: 4", "toward: [0, 1, 1], up: [0, 2, 2]", "view: up lies along the line of sight"),
     ("dark: {species: dark,", "da/rk: {species: dark,", "'da/rk' cannot be a name"),
-    ("view: {pixels: 1024, slabs: 4, width: 10}", "view: 7", "view: found 7 where keys are wanted: along, centre"),
+    ("view: {pixels: 1024, slabs: 4, width: 10}", "view: 7", "view: found 7 where keys are wanted: along, toward, up"),
     ("position: [x, y, z]", "position: x", "catalogue.position: found 'x' where a list is wanted"),
     ("files: part.*.hdf5", "files: []", "snapshot.files: nothing is listed here"),
     ("files: part.*.hdf5", "files: a\n  box: [1, 2]", "snapshot.box: 2 sides are given"),

@@ -8,7 +8,8 @@ import pytest
 
 from tilemap.errors import InputError
 from tilemap.quantities import number_in, span, split_quantity, unit_named
-from tilemap.sources.units import plain_unit, stated_by_attributes, temperature_factor
+from tilemap.sources.derived import temperature_factor
+from tilemap.sources.units import plain_unit, stated_by_attributes
 
 
 @pytest.mark.parametrize(

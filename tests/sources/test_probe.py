@@ -203,3 +203,17 @@ def test_files_of_different_kinds_are_refused(tmp_path):
     h5py.File(tmp_path / "a.hdf5", "w").close()
     with pytest.raises(InputError, match="of different kinds"):
         probe([tmp_path / "a.npz", tmp_path / "a.hdf5"])
+
+
+def test_the_draft_works_temperature_out_with_the_electrons_that_the_file_has(tmp_path, write_part):
+    datasets = {
+        "PartType0/Coordinates": (POSITION, {}),
+        "PartType0/Masses": (np.ones(64), {}),
+        "PartType0/InternalEnergy": (np.ones(64), {}),
+        "PartType0/ElectronAbundance": (np.zeros(64), {}),
+    }
+    write_part("a.hdf5", datasets, {"Header": {"Redshift": 1.0, "BoxSize": 10.0, "HubbleParam": 0.5}})
+    build, source = drafted([tmp_path / "a.hdf5"], tmp_path)
+    assert build.snapshot.species["gas"].fields["temperature"].electrons.dataset == ["PartType0/ElectronAbundance"]
+    # neutral gas, 1 (km/s)^2: 2/3 mu m_p / k_B with mu = 1.22, as in test_derived
+    assert next(source.chunks("gas", ["temperature"])).values["temperature"] == pytest.approx(98.5, rel=5e-3)

@@ -102,6 +102,65 @@ def mean_misfits(
 
 
 @njit(nogil=True, cache=True)
+def _dispersion_misfits(whole, whole_mean, parts, means, weights, low, high, mean_low, mean_high, w_low, w_high, noise):
+    count = 0
+    for i in range(whole.shape[0]):
+        for j in range(whole.shape[1]):
+            centre_low, centre_high = mean_low[whole_mean[i, j]], mean_high[whole_mean[i, j]]
+            if whole_mean[i, j] == 0 or not (np.isfinite(centre_low) and np.isfinite(centre_high)):
+                continue  # nothing here, which the mean's own check looks into; or at an end that holds no bound
+            about, off = 0.5 * (centre_low + centre_high), 0.5 * (centre_high - centre_low)
+            code = whole[i, j]
+            floor = max(low[code], 0.0) ** 2 - noise
+            ceiling = high[code] ** 2 + off * off + noise
+            pull_up, pull_down = 0.0, 0.0
+            known = True
+            for k in range(parts.shape[0]):
+                light, heavy = max(w_low[weights[k, i, j]], 0.0), w_high[weights[k, i, j]]
+                if means[k, i, j] == 0 or heavy <= 0.0:
+                    continue
+                near, far = mean_low[means[k, i, j]] - about, mean_high[means[k, i, j]] - about
+                known = known and np.isfinite(near) and np.isfinite(far)
+                least = 0.0 if near <= 0.0 <= far else min(abs(near), abs(far)) ** 2
+                bottom = least + max(low[parts[k, i, j]], 0.0) ** 2 - noise
+                top = max(abs(near), abs(far)) ** 2 + high[parts[k, i, j]] ** 2 + noise
+                pull_up += (heavy if top > floor else light) * (top - floor)
+                pull_down += (heavy if bottom < ceiling else light) * (bottom - ceiling)
+            if known and (pull_up < 0.0 or pull_down > 0.0):
+                count += 1
+    return count
+
+
+def dispersion_misfits(
+    whole: NDArray[np.uint16],
+    whole_mean: NDArray[np.uint16],
+    parts: NDArray[np.uint16],
+    means: NDArray[np.uint16],
+    weights: NDArray[np.uint16],
+    coding: Coding,
+    mean_coding: Coding,
+    weight_coding: Coding,
+    floor: float,
+) -> int:
+    """How many pixels of `whole` cannot be the dispersion of the same pixels of `parts` taken together.
+
+    About any number c the mean square is that of the dispersions and of (mean - c); with c the mean of the whole, it is
+    the square of the whole's dispersion, but for what the codes leave open about that mean.
+
+    Parameters
+    ----------
+    whole, whole_mean : uint16 (rows, columns)
+        The dispersion, and the mean that it is about.
+    parts, means, weights : uint16 (parts, rows, columns)
+    coding, mean_coding, weight_coding : Coding
+    floor : float
+        Dispersions below this are not told from zero.
+    """
+    bounds = (*coding.bounds(), *mean_coding.bounds(), *weight_coding.bounds())
+    return int(_dispersion_misfits(whole, whole_mean, parts, means, weights, *bounds, floor**2))
+
+
+@njit(nogil=True, cache=True)
 def _total(codes, low, high):
     least, most = 0.0, 0.0
     for i in range(codes.shape[0]):

@@ -161,7 +161,8 @@ class Coding(ABC):
         """The coding of a sheet, from its description in `atlas.json` or in its Zarr group.
 
         `nothing` is not written down, it follows: 0 for a sum in log coding (where there is nothing, the surface
-        density is zero), NaN for every mean (there is no temperature where there is no gas) and in linear coding.
+        density is zero), NaN for every mean and dispersion (there is no temperature where there is no gas) and in
+        linear coding.
 
         Raises
         ------
@@ -176,7 +177,7 @@ class Coding(ABC):
         except (KeyError, TypeError, ValueError) as error:
             raise InputError(f"a {name} coding needs the numbers low and step; found {dict(attributes)}") from error
         if name == "log":
-            return LogCoding(low, step, nothing=math.nan if attributes.get("kind") == "mean" else 0.0)
+            return LogCoding(low, step, nothing=math.nan if attributes.get("kind") in ("mean", "dispersion") else 0.0)
         return LinearCoding(low, step)
 
     @abstractmethod

@@ -125,14 +125,15 @@ def _epoch_faults(epoch: Mapping[str, Any], slabs: int) -> Iterator[str]:
         except InputError as error:
             yield f"{at}{error}"
             continue
-        if sheet["kind"] == "mean":
-            weight = names.get(sheet.get("weight"))
-            if weight is None or weight.get("kind") != "sum":
-                yield f"{at}its weight is {sheet.get('weight')!r}, which is no sum sheet of this epoch"
+        if sheet["kind"] in ("mean", "dispersion"):
+            needed = {"weight": "sum"} if sheet["kind"] == "mean" else {"weight": "sum", "mean": "mean"}
+            for role, kind in needed.items():
+                if names.get(sheet.get(role), {}).get("kind") != kind:
+                    yield f"{at}its {role} is {sheet.get(role)!r}, which is no {kind} sheet of this epoch"
         elif sheet["kind"] == "sum":
             yield from _total_faults(sheet, unit, slabs, at)
         else:
-            yield f"{at}kind is {sheet['kind']!r}, and must be sum or mean"
+            yield f"{at}kind is {sheet['kind']!r}, and must be sum, mean or dispersion"
 
 
 def _total_faults(sheet: Mapping[str, Any], unit: u.UnitBase, slabs: int, at: str) -> Iterator[str]:

@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from tilemap.pyramid.agree import mean_misfits, sum_misfits, total_bounds
+from tilemap.pyramid.agree import dispersion_misfits, mean_misfits, sum_misfits, total_bounds
 from tilemap.pyramid.coding import Coding
 from tilemap.pyramid.findings import Finding, TilePlace, whose
 from tilemap.pyramid.grid import TILE
@@ -29,6 +29,7 @@ class Stack:
     levels: list[ArrayReader]
     coding: Coding
     weight: Stack | None = None
+    mean: Stack | None = None
     found: list[Finding] = field(default_factory=list)
 
     def place(self, level: int, slab: int, row: int, column: int) -> TilePlace:
@@ -119,10 +120,15 @@ class _Average:
             misfits = sum_misfits(coarse, parts, stack.coding, 0.25) if coarse.any() or parts.any() else 0
         else:
             try:
-                weights = self._parts(stack.weight, Checked())
+                misfits = _weighed_misfits(
+                    stack,
+                    coarse,
+                    parts,
+                    (self.level, self.slab, self.row, self.column),
+                    lambda s: self._parts(s, Checked()),
+                )
             except _Unreadable:
                 return checked
-            misfits = mean_misfits(coarse, parts, weights, stack.coding, stack.weight.coding)
         if misfits:
             path = stack.path(self.level, self.slab, self.row, self.column)
             what = f"{_pixels(misfits)} not the {_mean_word(stack)} of level {self.level - 1}"
@@ -189,16 +195,18 @@ class _Whole:
         try:
             whole = stack.codes(self.level, 0, self.row, self.column, checked.found)
             parts = self._parts(self.slabs)
-            if stack.weight is None or self.slabs.weight is None:
+            if stack.weight is None:
                 misfits = sum_misfits(whole, parts, stack.coding, 1.0)
             else:
-                weights = self._parts(self.slabs.weight)
-                misfits = mean_misfits(whole, parts, weights, stack.coding, stack.weight.coding)
+                misfits = _weighed_misfits(
+                    stack, whole, parts, (self.level, 0, self.row, self.column), lambda s: self._parts(s), self.slabs
+                )
         except _Unreadable:
             return checked
         if misfits:
             path = stack.path(self.level, 0, self.row, self.column)
-            what = f"{_pixels(misfits)} not the {'sum' if stack.weight is None else 'weighted mean'} of the slabs"
+            word = {"sum": "sum", "mean": "weighted mean"}.get(stack.sheet["kind"], "dispersion")
+            what = f"{_pixels(misfits)} not the {word} of the slabs"
             checked.found.append(Finding(path, what, stack.place(self.level, 0, self.row, self.column)))
         return checked
 
@@ -208,9 +216,34 @@ class _Whole:
         return np.stack([stack.codes(self.level, slab, self.row, self.column, []) for slab in range(count)])
 
 
+def _weighed_misfits(
+    stack: Stack,
+    whole: NDArray[np.uint16],
+    parts: NDArray[np.uint16],
+    place: tuple[int, int, int, int],
+    parts_of: Callable[[Stack], NDArray[np.uint16]],
+    below: Stack | None = None,
+) -> int:
+    """How many pixels cannot be the mean, or the dispersion, of their parts.
+
+    `place` is (level, slab, row, column) of the whole; the parts are of the stack `below`, where that is another one.
+    """
+    below = below or stack
+    assert stack.weight is not None and below.weight is not None
+    weights = parts_of(below.weight)
+    if stack.mean is None or below.mean is None:
+        return mean_misfits(whole, parts, weights, stack.coding, below.weight.coding)
+    codings = stack.coding, stack.mean.coding, below.weight.coding
+    about = stack.mean.codes(*place, [])
+    return dispersion_misfits(whole, about, parts, parts_of(below.mean), weights, *codings, stack.sheet["floor"])
+
+
 def _pixels(count: int) -> str:
     return f"{count} pixels are" if count > 1 else "1 pixel is"
 
 
 def _mean_word(stack: Stack) -> str:
-    return "average" if stack.weight is None else f"average, weighted by {stack.sheet['weight']},"
+    if stack.weight is None:
+        return "average"
+    word = "average" if stack.mean is None else "dispersion"
+    return f"{word}, weighted by {stack.sheet['weight']},"

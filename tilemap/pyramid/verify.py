@@ -116,7 +116,8 @@ def _open_epoch(root: Path, described: Mapping[str, Any], epoch: Mapping[str, An
     columns, rows = described["pixels"]
     slabs = len(described["slabs"]) - 1
     opened: dict[tuple[str, bool], Stack] = {}
-    for sheet in sorted(epoch["sheets"], key=lambda sheet: sheet["kind"] == "mean"):
+    # What a sheet needs comes before it.
+    for sheet in sorted(epoch["sheets"], key=lambda sheet: bool(sheet.get("weight")) + bool(sheet.get("mean"))):
         for whole in (False, True) if slabs > 1 else (False,):
             stack = Stack(root, epoch["name"], sheet, whole, [], Coding.from_attributes(sheet))
             opened[sheet["name"], whole] = stack
@@ -134,12 +135,13 @@ def _open_epoch(root: Path, described: Mapping[str, Any], epoch: Mapping[str, An
                 if reader.shape != expected:
                     what = f"its shape is {reader.shape}, and {expected} was expected"
                     stack.found.append(Finding(f"{folder}/{level}/zarr.json", what))
-            if sheet["kind"] == "mean":
-                stack.weight = opened[sheet["weight"], whole]
-                if stack.weight.found:
-                    stack.found.append(
-                        Finding(folder, f"cannot be checked, for its weight {sheet['weight']} is damaged")
-                    )
+            for role in ("weight", "mean"):
+                if sheet.get(role):
+                    needed = opened[sheet[role], whole]
+                    setattr(stack, role, needed)
+                    if needed.found:
+                        what = f"cannot be checked, for its {role} {sheet[role]} is damaged"
+                        stack.found.append(Finding(folder, what))
             yield stack
 
 

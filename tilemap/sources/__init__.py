@@ -6,7 +6,9 @@ mass in Msun/yr, all without h; what has another dimension in cgs. On a flat cha
 
 from __future__ import annotations
 
-from tilemap.buildfile import BuildFile, Field
+from collections.abc import Iterator
+
+from tilemap.buildfile import DERIVED, BuildFile, Field
 from tilemap.errors import InputError
 from tilemap.sources.reader import Reader, find_files, kind_of
 from tilemap.sources.source import Chunk, Facts, Source
@@ -57,9 +59,13 @@ def _datasets(build: BuildFile) -> list[str]:
         smoothing = species.smoothing.field
         fields = [species.position, species.mass, smoothing, *species.fields.values()]
         for field in fields:
-            innermost: Field | None = field
-            while innermost is not None and innermost.temperature_from is not None:
-                innermost = innermost.temperature_from
-            if innermost is not None and innermost.dataset is not None:
-                names.update(dict.fromkeys(innermost.dataset))
+            names.update(dict.fromkeys(_named(field)))
     return list(names)
+
+
+def _named(field: Field | None) -> Iterator[str]:
+    """The datasets of a field, and of those that it is worked out from."""
+    if field is not None:
+        yield from field.dataset or ()
+        for key in (*DERIVED, "electrons"):
+            yield from _named(getattr(field, key))

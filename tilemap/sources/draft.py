@@ -141,8 +141,13 @@ def _species(seen: Survey, group: SeenGroup) -> _Draft | None:
         lines += ["      fields:", f"        temperature: {where}{note}"]
     elif energy is not None:
         where, note = field(energy, "km2/s2")
-        note = note or "   # ionised or neutral: check"
-        lines += ["      fields:", f"        temperature: {{temperature_from: {where}, gas: ionised}}{note}"]
+        electrons = group.find("electronabundance")
+        how = "gas: ionised"
+        if electrons is not None:
+            how = f"electrons: {_name(electrons)}"
+        else:
+            note = note or "   # ionised or neutral: check"
+        lines += ["      fields:", f"        temperature: {{temperature_from: {where}, {how}}}{note}"]
     return _Draft(name, group.rows, lines, has_mass, temperature is not None or energy is not None, position)
 
 

@@ -8,11 +8,14 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import astropy.units as u
+import numpy as np
+from numpy.typing import NDArray
 
 from tilemap.buildfile import Field, Smoothing, Species
 from tilemap.errors import InputError
+from tilemap.sources import derived
 from tilemap.sources.reader import Dataset, Reader
-from tilemap.sources.units import Conversion, Moment, conversion, temperature_factor
+from tilemap.sources.units import NONE, Conversion, Moment, conversion
 
 
 @dataclass(frozen=True)
@@ -25,6 +28,15 @@ class Column:
 
 
 @dataclass(frozen=True)
+class Derived:
+    """A field: its columns and, where it is not one of them as it stands, the formula; and the unit of what comes out."""
+
+    columns: tuple[Column, ...]
+    unit: u.UnitBase
+    formula: derived.Formula | None = None
+
+
+@dataclass(frozen=True)
 class Plan:
     """All that is read of a species; a plain number stands for a constant."""
 
@@ -32,15 +44,16 @@ class Plan:
     position: list[Column]
     mass: Column | float
     radius: Column | float | None
-    fields: dict[str, Column]
+    fields: dict[str, Derived]
 
 
 class Planner:
-    """Plans species for one reader at one moment."""
+    """Plans species for one reader at one moment, seen along `sight`, a unit vector (3,) in x, y and z."""
 
-    def __init__(self, reader: Reader, moment: Moment) -> None:
+    def __init__(self, reader: Reader, moment: Moment, sight: NDArray[np.float64]) -> None:
         self._reader = reader
         self._moment = moment
+        self._sight = sight
 
     def plan(self, name: str, species: Species) -> Plan:
         """The plan for the species of that name; InputError naming the key at fault."""
@@ -51,8 +64,8 @@ class Planner:
         if species.mass is not None:
             mass = self._mass(f"{here}.mass", species)
         radius = self._radius(f"{here}.smoothing", species.smoothing)
-        fields = {field: self._column(f"{here}.fields.{field}", spec) for field, spec in species.fields.items()}
-        for column in (*position, mass, radius, *fields.values()):
+        fields = {field: self._field(f"{here}.fields.{field}", spec, species) for field, spec in species.fields.items()}
+        for column in (*position, mass, radius, *(column for field in fields.values() for column in field.columns)):
             if isinstance(column, Column):
                 self._same_length(position[0].dataset, column.dataset)
         return Plan(rows, position, mass, radius, fields)
@@ -101,11 +114,49 @@ class Planner:
             factor = KERNELS[smoothing.kernel].support_over_fwhm
         return Column(column.dataset, column.column, Conversion(column.convert.factor * factor, column.convert.unit))
 
-    def _column(self, here: str, spec: Field, kind: str | None = None) -> Column:
+    def _field(self, here: str, spec: Field, species: Species) -> Derived:
         if spec.temperature_from is not None:
             energy = self._column(f"{here}.temperature_from", spec.temperature_from, "specific energy")
-            factor = energy.convert.factor * temperature_factor(spec.gas or "ionised")
-            return Column(energy.dataset, energy.column, Conversion(factor, u.K))
+            if spec.electrons is not None:
+                electrons = self._column(f"{here}.electrons", spec.electrons)
+                if electrons.convert.unit != NONE:
+                    raise InputError(
+                        f"{here}.electrons: {electrons.dataset} is in {electrons.convert.unit}, where the number of free "
+                        "electrons to a hydrogen nucleus is wanted"
+                    )
+                return Derived((energy, electrons), u.K, derived.temperature)
+            factor = energy.convert.factor * derived.temperature_factor(spec.gas or "ionised")
+            return Derived((Column(energy.dataset, energy.column, Conversion(factor, u.K)),), u.K)
+        if spec.density_squared_from is not None:
+            if species.mass is None:
+                raise InputError(f"{here}.density_squared_from: the species has no mass to go with it: give its mass")
+            density = self._column(f"{here}.density_squared_from", spec.density_squared_from, "density")
+            factor = density.convert.factor * float((u.Msun * density.convert.unit).to(derived.SQUARED_DENSITY))
+            density = Column(density.dataset, density.column, Conversion(factor, density.convert.unit))
+            return Derived((density,), derived.SQUARED_DENSITY, derived.density_squared)
+        if spec.line_of_sight is not None:
+            columns = self._vector(f"{here}.line_of_sight", spec.line_of_sight)
+            return Derived(columns, columns[0].convert.unit, derived.line_of_sight(self._sight))
+        column = self._column(here, spec)
+        return Derived((column,), column.convert.unit)
+
+    def _vector(self, here: str, spec: Field) -> tuple[Column, ...]:
+        """A vector in x, y and z: one dataset of three columns, or three of one."""
+        if self._moment.angle is not None:
+            raise InputError(f"{here}: a flat chart has no line of sight: name the field's own dataset")
+        if spec.dataset is None or spec.column is not None:
+            raise InputError(f"{here}: name a dataset of three columns, or three datasets of one")
+        looks = [self._number_dataset(here, dataset) for dataset in spec.dataset]
+        widths = [look.width or 1 for look in looks]
+        if sum(widths) != 3 or len(widths) == 2:
+            found = ", ".join(f"{dataset} has {width}" for dataset, width in zip(spec.dataset, widths, strict=True))
+            raise InputError(f"{here}: a vector has three columns, one dataset of three or three of one: {found}")
+        return tuple(
+            Column(dataset, None, self._conversion(here, spec, look, dataset, None))
+            for dataset, look in zip(spec.dataset, looks, strict=True)
+        )
+
+    def _column(self, here: str, spec: Field, kind: str | None = None) -> Column:
         if spec.dataset is None or len(spec.dataset) != 1:
             raise InputError(f"{here}: name one dataset, of one column")
         dataset = spec.dataset[0]

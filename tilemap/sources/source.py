@@ -14,7 +14,7 @@ from tilemap.buildfile import BuildFile
 from tilemap.cosmology import Cosmology, scale_factor
 from tilemap.errors import InputError
 from tilemap.quantities import suggestion, unit_named
-from tilemap.sources.plan import Column, Plan, Planner
+from tilemap.sources.plan import Column, Derived, Plan, Planner
 from tilemap.sources.reader import Header, Reader, Wanted
 from tilemap.sources.units import NONE, Moment
 
@@ -74,7 +74,7 @@ class Source:
         self._build = build
         self._reader = reader
         self._header: Header = reader.header()
-        planner = Planner(reader, self._moment)
+        planner = Planner(reader, self._moment, build.view.vectors[2])
         self._plans = {name: planner.plan(name, species) for name, species in build.snapshot.species.items()}
         self.facts  # noqa: B018 - a box that cannot be converted is found here, not in the middle of a build
 
@@ -122,7 +122,7 @@ class Source:
             return u.Msun
         if field == "count":
             return NONE
-        return self._field_of(plan, species, field).convert.unit
+        return self._field_of(plan, species, field).unit
 
     def chunks(self, species: str, fields: Sequence[str] = (), size: int = 1 << 20) -> Iterator[Chunk]:
         """Every particle once, in the order of the files, at most `size` at a time.
@@ -141,8 +141,9 @@ class Source:
             not finite: how many there are in the whole species and where the first ones are.
         """
         plan = self._plan_of(species)
-        columns = {name: self._field_of(plan, species, name) for name in fields if name not in ("mass", "count")}
-        roles = (*plan.position, plan.mass, plan.radius, *columns.values())
+        derived = {name: self._field_of(plan, species, name) for name in fields if name not in ("mass", "count")}
+        columns = [column for field in derived.values() for column in field.columns]
+        roles = (*plan.position, plan.mass, plan.radius, *columns)
         wanted = list(dict.fromkeys((each.dataset, each.column) for each in roles if isinstance(each, Column)))
         start = 0
         for part, rows in enumerate(plan.rows):
@@ -150,12 +151,12 @@ class Source:
                 continue
             for block in self._reader.blocks(part, wanted, size):
                 stored = dict(zip(wanted, block, strict=True))
-                chunk = _make_chunk(start, stored, plan, columns)
+                chunk = _make_chunk(start, stored, plan, derived)
                 if "mass" in fields:
                     chunk.values["mass"] = chunk.mass
                 if "count" in fields:
                     chunk.values["count"] = np.ones(len(chunk))
-                self._check(chunk, species, plan, columns)
+                self._check(chunk, species, plan, derived)
                 start += len(chunk)
                 yield chunk
 
@@ -165,7 +166,7 @@ class Source:
         return self._plans[species]
 
     @staticmethod
-    def _field_of(plan: Plan, species: str, field: str) -> Column:
+    def _field_of(plan: Plan, species: str, field: str) -> Derived:
         if field not in plan.fields:
             near = suggestion(field, [*plan.fields, "mass", "count"])
             raise InputError(f"species {species!r} has no field {field!r}: {near}")
@@ -173,7 +174,7 @@ class Source:
 
     # Bad numbers: counted over the whole species, so that one run tells all.
 
-    def _check(self, chunk: Chunk, species: str, plan: Plan, columns: dict[str, Column]) -> None:
+    def _check(self, chunk: Chunk, species: str, plan: Plan, fields: dict[str, Derived]) -> None:
         if not _all_finite(chunk.position):
             self._refuse(species, plan, plan.position, np.isfinite, "a position that is not a finite number")
         if isinstance(plan.radius, Column) and chunk.radius is not None and not _all_radii(chunk.radius):
@@ -182,9 +183,9 @@ class Source:
             )
         if isinstance(plan.mass, Column) and not (chunk.mass.min() >= 0 and _all_finite(chunk.mass)):
             self._refuse(species, plan, [plan.mass], _good_mass, "a mass that is negative or not a finite number")
-        for name, column in columns.items():
+        for name, field in fields.items():
             if not _all_finite(chunk.values[name]):
-                self._refuse(species, plan, [column], np.isfinite, f"a {name} that is not a finite number")
+                self._refuse(species, plan, list(field.columns), np.isfinite, f"a {name} that is not a finite number")
 
     def _refuse(self, species: str, plan: Plan, columns: list[Column], good: Test, what: str) -> None:
         count, start = 0, 0
@@ -210,7 +211,7 @@ class Source:
         )
 
 
-def _make_chunk(start: int, stored: dict[Wanted, np.ndarray], plan: Plan, columns: dict[str, Column]) -> Chunk:
+def _make_chunk(start: int, stored: dict[Wanted, np.ndarray], plan: Plan, fields: dict[str, Derived]) -> Chunk:
     def numbers(column: Column) -> np.ndarray:
         return column.convert(stored[column.dataset, column.column])
 
@@ -222,7 +223,11 @@ def _make_chunk(start: int, stored: dict[Wanted, np.ndarray], plan: Plan, column
     elif plan.radius is not None:
         radius = np.full(count, plan.radius)
     mass = numbers(plan.mass) if isinstance(plan.mass, Column) else np.full(count, plan.mass)
-    return Chunk(start, position, radius, mass, {name: numbers(column) for name, column in columns.items()})
+    values = {}
+    for name, field in fields.items():
+        read = [numbers(column) for column in field.columns]
+        values[name] = read[0] if field.formula is None else field.formula(mass, *read)
+    return Chunk(start, position, radius, mass, values)
 
 
 def _three_columns(pieces: list[np.ndarray]) -> np.ndarray:

@@ -11,7 +11,6 @@ from typing import Any, Protocol
 
 import astropy.units as u
 import numpy as np
-from astropy import constants
 
 from tilemap.errors import InputError
 from tilemap.quantities import KINDS, unit_named
@@ -254,16 +253,3 @@ def plain_unit(unit: u.UnitBase, dataset: str = "this") -> u.UnitBase:
 def tidy(factor: float) -> float:
     """1 exactly where the factor is 1 within 1e-8: the last digits in which codes and tables disagree about a parsec."""
     return 1.0 if abs(factor - 1.0) < 1e-8 else factor
-
-
-def temperature_factor(gas: str) -> float:
-    """Kelvin per (km/s)^2 of specific internal energy: T = (gamma - 1) mu m_p u / k_B with gamma = 5/3.
-
-    The mean molecular weight of gas of hydrogen fraction X = 0.76 is mu = 4 / (1 + 3 X) neutral and 4 / (3 + 5 X)
-    ionised (helium makes up the rest; e.g. Mo, van den Bosch & White 2010, Galaxy Formation and Evolution, appendix
-    B; from memory).
-    """
-    hydrogen = 0.76
-    mu = 4.0 / (1.0 + 3.0 * hydrogen) if gas == "neutral" else 4.0 / (3.0 + 5.0 * hydrogen)
-    per_energy = (5.0 / 3.0 - 1.0) * mu * constants.m_p / constants.k_B
-    return float(per_energy.to_value(u.K / (u.km / u.s) ** 2))

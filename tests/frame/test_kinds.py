@@ -1,0 +1,45 @@
+"""Sheets that are neither sums nor means: what the frame makes of several of their slabs is what `atlas.read` makes."""
+
+from __future__ import annotations
+
+import numpy as np
+import pytest
+from build_maker import BOX, changed, description, particles, write_build
+from live import Live
+
+import tilemap
+from tilemap.build_atlas import build_atlas
+from tilemap.server.app import make_app
+
+PIXEL = BOX / 1024
+SHEETS = {"spread": {"species": "gas", "dispersion": "velocity", "unit": "km/s", "coding": "linear"}}
+
+
+@pytest.fixture(scope="module")
+def built(tmp_path_factory):
+    """A box of 8 Mpc, 1024 pixels, 4 slabs."""
+    folder = tmp_path_factory.mktemp("kinds")
+    sheets = {f"sheets__{name}": sheet for name, sheet in SHEETS.items()}
+    build = changed(description(), view__pixels=1024, view__slabs=4, **sheets)
+    return tilemap.open(build_atlas(write_build(folder, build, particles(3000)), folder / "kinds.atlas"))
+
+
+@pytest.fixture(scope="module")
+def address(built):
+    server = Live(make_app([built.path]))
+    yield f"{server.address}/kinds/"
+    server.stop()
+
+
+@pytest.mark.parametrize(("depth", "slabs"), [("", None), ("2:4", 1), ("2:6", slice(1, 3)), ("0:6", slice(0, 3))])
+@pytest.mark.parametrize("sheet", SHEETS)
+def test_the_reading_is_the_number_in_the_atlas(open_screen, address, built, sheet, depth, slabs):
+    window = f"&depth={depth}" if depth else ""
+    screen = open_screen(f"#u=4&v=4&width=2&sheet={sheet}{window}", address=address)
+    for u, v in [(4.1, 4.2), (3.7, 3.9), (4.4, 3.6)]:
+        u, v = ((np.floor(place / PIXEL) + 0.5) * PIXEL for place in (u, v))
+        x, y = map(round, screen.at(u, v))
+        screen.page.mouse.move(x, y)
+        u, v = screen.under(x, y)
+        expected = float(built.read(sheet, (u, v), PIXEL, PIXEL, slabs=slabs).values[0, 0])
+        assert screen.value() == pytest.approx(expected, rel=2e-6)

@@ -127,3 +127,78 @@ def test_the_description_of_a_chart_is_plane_and_has_no_box():
     described = describe_view(chart(), make_camera(chart(), facts(None)))
     assert (described["coordinates"], described["unit"], described["box"]) == ("plane", "deg", None)
     assert described["periodic"] is False
+
+
+# Turned.
+
+CUBE = np.array([20.0, 20.0, 20.0])
+
+
+@pytest.mark.parametrize(
+    ("view", "vectors"),
+    [
+        ({"toward": [0, 0, 5], "up": [0, 2, 0]}, [[1, 0, 0], [0, 1, 0], [0, 0, 1]]),
+        ({"toward": [0, 0, 1]}, [[1, 0, 0], [0, 1, 0], [0, 0, 1]]),
+        ({"toward": [1, 0, 0]}, [[0, 1, 0], [0, 0, 1], [1, 0, 0]]),
+        ({"toward": [0, 1, 0], "up": [1, 0, 0]}, [[0, 0, 1], [1, 0, 0], [0, 1, 0]]),
+        ({"toward": [0, 0, -1]}, [[-1, 0, 0], [0, 1, 0], [0, 0, -1]]),
+        ({"toward": [3, 4, 0]}, [[-0.8, 0.6, 0], [0, 0, 1], [0.6, 0.8, 0]]),
+        ({"toward": [0, 3, 4], "up": [0, 9, 1]}, [[1, 0, 0], [0, 0.8, -0.6], [0, 0.6, 0.8]]),
+    ],
+)
+def test_the_vectors_of_a_view_are_those_worked_out_by_hand(view, vectors):
+    assert build(view={"pixels": 512, **view}).view.vectors == pytest.approx(np.array(vectors, dtype=float))
+
+
+def test_the_vectors_of_any_view_are_right_handed_and_up_is_up():
+    rng = np.random.default_rng(2)
+    for toward, up in rng.normal(size=(20, 2, 3)):
+        u, v, depth = build(view={"pixels": 512, "toward": toward.tolist(), "up": up.tolist()}).view.vectors
+        assert np.cross(u, v) == pytest.approx(depth)
+        assert depth @ toward == pytest.approx(np.linalg.norm(toward))
+        assert (v @ up > 0, u @ up) == (True, pytest.approx(0))
+
+
+def test_a_turned_view_without_more_words_is_a_cube_of_the_longest_side_about_the_middle():
+    camera = make_camera(build(view={"pixels": 512, "toward": [3, 4, 0]}), facts())
+    # The middle of the box is (5, 10, 20): u = -4 + 6, v = 20, depth = 3 + 8.
+    assert (camera.u, camera.v) == (pytest.approx((-18, 22)), pytest.approx((0, 40)))
+    assert camera.depth == pytest.approx((-9, 31))
+    assert (camera.period, camera.box.tolist()) == (None, [10, 20, 40])
+
+
+def test_a_turned_view_has_a_part_of_the_volume_and_slabs_of_any_depth():
+    view = {"pixels": 1024, "toward": [3, 4, 0], "centre": [5, 0, 7], "width": 4, "height": 2, "slabs": [1, 2, 5]}
+    camera = make_camera(build(view=view), facts())
+    assert (camera.u, camera.v) == (pytest.approx((-6, -2)), pytest.approx((6, 8)))
+    assert (camera.rows, camera.edges.tolist()) == (512, [1, 2, 5])
+
+
+def test_where_nothing_repeats_a_turned_view_has_no_images():
+    assert make_camera(build(view={"pixels": 512, "toward": [3, 4, 0]}), facts(periodic=False)).box is None
+
+
+def test_the_description_of_a_turned_view_has_its_vectors():
+    spec = build(view={"pixels": 512, "toward": [3, 4, 0]})
+    described = describe_view(spec, make_camera(spec, facts()))
+    assert described["vectors"] == [pytest.approx(row) for row in ([-0.8, 0.6, 0], [0, 0, 1], [0.6, 0.8, 0])]
+    assert (described["along"], described["axes"]) == (None, ["u", "v", "depth"])
+    assert (described["periodic"], described["box"]) == (True, [10, 20, 40])
+
+
+def test_the_description_along_an_axis_has_vectors_too():
+    spec = build(view__along="x", view__width=2)
+    assert describe_view(spec, make_camera(spec, facts()))["vectors"] == [[0, 1, 0], [0, 0, 1], [1, 0, 0]]
+
+
+def test_a_turned_view_over_too_many_copies_of_the_box_is_refused():
+    view = {"pixels": 512, "toward": [1, 2, 3], "width": 900}
+    with pytest.raises(
+        InputError, match=r"it touches \d+ copies of the periodic box: make width, height or depth smaller"
+    ):
+        make_camera(build(view=view), facts(CUBE))
+
+
+def test_a_chart_is_not_turned():
+    with pytest.raises(InputError, match=r"view\.toward: a chart in deg cannot be turned"):
+        chart(view__toward=[0, 0, 1], view__along=None)

@@ -160,6 +160,8 @@ def _check_sheet(build: BuildFile, name: str, sheet: Sheet) -> None:
 def _check_view(build: BuildFile) -> None:
     view = build.view
     if view.flat:
+        if view.toward is not None:
+            raise InputError(f"view.toward: a chart in {view.unit} cannot be turned: leave it out")
         for key in ("centre", "width"):
             if getattr(view, key) is None:
                 raise InputError(f"view.{key}: a chart in {view.unit} has no box to take it from: give {key}")

@@ -75,7 +75,7 @@ class SpeciesDrawing:
         def route(chunk: Chunk) -> tuple[int, NDArray[np.int64], NDArray[np.float32], NDArray[np.float64]]:
             values, ranges = self.planes.planes(chunk)
             assert chunk.radius is not None
-            return len(chunk), *self.buckets.route(chunk.position, chunk.radius, values), ranges
+            return len(chunk), *self.buckets.route(*self.camera.see(chunk.position, chunk.radius, values)), ranges
 
         for length, starts, placed, ranges in self.runner.map(route, self._settled_chunks()):
             self.buckets.add(starts, placed)

@@ -150,7 +150,7 @@ def inside(
     values = atlas.read(sheet, **window).values.astype(np.float64)
     there = np.isfinite(values)
     values = np.where(there, values, 0.0)
-    if described["kind"] == "mean":
+    if described["weight"]:
         dense = np.nan_to_num(atlas.read(described["weight"], **window).values.astype(np.float64))
         weight = np.where(there, np.maximum(dense, LEAST_WEIGHT), 0.0) * share
         of = atlas.sheet(described["weight"], epoch)

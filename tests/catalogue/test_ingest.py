@@ -88,6 +88,53 @@ def test_the_image_axes_follow_the_line_of_sight(tmp_path, along, expected):
     assert (first["tilemap_u"], first["tilemap_v"], first["tilemap_depth"]) == expected
 
 
+# Seen toward (3, 4, 0) with z up.
+TURNED = {"along": None, "vectors": [[-0.8, 0.6, 0.0], [0.0, 0.0, 1.0], [0.6, 0.8, 0.0]]}
+
+
+def test_seen_from_elsewhere_objects_are_turned_with_the_camera(tmp_path):
+    view = view_of(**TURNED | {"periodic": False, "u": [0.0, 2.0], "v": [0.0, 10.0], "depth": [0.0, 10.0]})
+    entry, rows = ingested(tmp_path, table(), view=view)
+    # (1, 4, 7), (2, 5, 8), (3, 6, 9): u = -0.8 x + 0.6 y, v = z, depth = 0.6 x + 0.8 y
+    found = {row["name"]: (row["tilemap_u"], row["tilemap_v"], row["tilemap_depth"]) for row in rows}
+    assert found == {
+        "a": pytest.approx((1.6, 7, 3.8)),
+        "b": pytest.approx((1.4, 8, 5.2)),
+        "c": pytest.approx((1.2, 9, 6.6)),
+    }
+    assert entry["outside"] == 0
+
+
+def test_seen_from_elsewhere_an_object_stands_once_at_its_image_nearest_the_middle_of_the_view(tmp_path):
+    view = view_of(**TURNED | {"u": [-8.0, 12.0], "v": [0.0, 20.0], "depth": [0.0, 20.0]})
+    entry, rows = ingested(tmp_path, table(), view=view)
+    assert (entry["count"], entry["outside"]) == (3, 0)
+    middle = np.array([2.0, 10.0, 10.0])
+    moves = np.stack(np.meshgrid(*[np.arange(-3, 4) * 10.0] * 3), axis=-1).reshape(-1, 3)
+    for row in rows:
+        place = np.array([row["x"], row["y"], row["z"]])
+        images = (place + moves) @ np.array(TURNED["vectors"]).T
+        nearest = images[np.argmin(((images - middle) ** 2).sum(axis=1))]
+        assert (row["tilemap_u"], row["tilemap_v"], row["tilemap_depth"]) == pytest.approx(tuple(nearest))
+
+
+def test_seen_from_elsewhere_an_object_whose_nearest_image_is_out_of_view_stands_at_one_that_is_not(tmp_path):
+    # The view is a thin sheet far across: (1, 4, 7) is nearest its middle at a depth that is not shown.
+    view = view_of(**TURNED | {"u": [-40.0, 40.0], "v": [0.0, 10.0], "depth": [9.7, 9.9]})
+    _, rows = ingested(tmp_path, table(), view=view)
+    # One period along (-1, 2) changes depth by 10 (-0.6 + 1.6) = 10, u by 10 (0.8 + 1.2) = 20; (3, -1) by 10 and -30: of
+    # depths 3.8 + 6 i + 8 j = 9.8 the smallest steps are i = 1, j = 0, which is u = 1.6 - 8.
+    assert [(row["tilemap_u"], row["tilemap_depth"]) for row in rows if row["name"] == "a"] == [
+        pytest.approx((-6.4, 9.8))
+    ]
+
+
+def test_seen_from_elsewhere_positions_need_three_columns(tmp_path):
+    section = Catalogue(file="objects.ecsv", position=["x", "y"], rank="mass")
+    with pytest.raises(InputError, match="position needs 3 column names, found 2"):
+        ingested(tmp_path, table(), section, view_of(**TURNED))
+
+
 def test_positions_are_wrapped_into_a_view_across_the_box_edge(tmp_path):
     _, rows = ingested(tmp_path, table(), view=view_of(u=[2.5, 12.5]))
     assert sorted(row["tilemap_u"] for row in rows) == [3.0, 11.0, 12.0]

@@ -38,6 +38,33 @@ def camera(
     return Camera(along, corner[0], corner[1] + rows * pixel, pixel, columns, rows, edges, sides)
 
 
+def turned(
+    vectors: np.ndarray,
+    pixels: int = 1024,
+    slabs: int | Iterable[float] = 1,
+    width: float | None = None,
+    centre: tuple[float, float, float] = (0.0, 0.0, 0.0),
+    box: float | None = None,
+) -> Camera:
+    """A turned camera about a centre in x, y and z, as deep as wide, or with slabs at these depths."""
+    width = float(pixels) if width is None else width
+    u, v, depth = vectors @ np.array(centre)
+    edges = np.linspace(depth - width / 2, depth + width / 2, slabs + 1) if isinstance(slabs, int) else np.array(slabs)
+    sides = None if box is None else np.full(3, box)
+    return Camera(
+        "",
+        u - width / 2,
+        v + width / 2,
+        width / pixels,
+        pixels,
+        pixels,
+        edges,
+        None,
+        np.array(vectors, dtype=float),
+        sides,
+    )
+
+
 def draw(
     camera: Camera,
     position: np.ndarray,
@@ -61,7 +88,7 @@ def draw(
     size = chunk or max(count, 1)
     for start in range(0, count, size):
         part = slice(start, start + size)
-        buckets.add(*buckets.route(position[part], radius[part], values[part]))
+        buckets.add(*buckets.route(*camera.see(position[part], radius[part], values[part])))
     cycle = Cycle(plan, values.shape[1], stamps_for(kernel))
     out = np.zeros((plan.slabs, values.shape[1], plan.rows, plan.columns), dtype=np.float32)
     for slab in range(plan.slabs):

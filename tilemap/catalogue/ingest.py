@@ -20,6 +20,7 @@ from astropy import units
 from tilemap.catalogue.curve import curve_order
 from tilemap.catalogue.tables import Column, free_name, read_columns
 from tilemap.errors import InputError
+from tilemap.project.images import images_seen
 from tilemap.quantities import unit_named
 
 if TYPE_CHECKING:
@@ -42,7 +43,8 @@ def ingest(catalogue: Catalogue, folder: Path, view: dict[str, Any], out: Path) 
     folder
         What a relative `file` is relative to.
     view
-        The `view` object of atlas.json: ``along``, ``u``, ``v``, ``depth`` ranges in ``unit``, ``periodic``, ``box``.
+        The `view` object of atlas.json: ``along`` (None and ``vectors`` where the camera is turned), ``u``, ``v``,
+        ``depth`` ranges in ``unit``, ``periodic``, ``box``.
     out
         The atlas folder being built.
 
@@ -80,10 +82,12 @@ def ingest(catalogue: Catalogue, folder: Path, view: dict[str, Any], out: Path) 
         return found.values.astype(np.float64) * _factor(text, length, f"catalogue {path}: column {name!r}")
 
     places = [lengths(name, "position") for name in catalogue.position]
+    _refuse_bad_rows(path, catalogue.position, places)
+    rows = np.arange(1, len(places[0]) + 1)
     u, v, depth = _image_axes(places, view, path)
-    _refuse_bad_rows(path, catalogue.position, (u, v, depth))
-    rows = np.arange(1, len(u) + 1)
-    if view.get("periodic") and view.get("box"):
+    if view.get("along", "z") is None:
+        rows, u, v, depth = _nearest_images(places, view)
+    elif view.get("periodic") and view.get("box"):
         box = [view["box"][axis] for axis in ALONG[view["along"]]]
         rows, u, v, depth = _images(rows, (u, v, depth), view, box)
     else:
@@ -132,16 +136,36 @@ def _image_axes(
     places: list[np.ndarray], view: dict[str, Any], path: Path
 ) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
     """(u, v, depth) of positions given as (x, y, z), or as (u, v) on a chart without depth."""
-    if len(places) == 2:
+    if len(places) == 2 and view.get("along", "z") is not None:
         middle = 0.5 * (view["depth"][0] + view["depth"][1])
         return places[0], places[1], np.full(len(places[0]), middle)
     if len(places) != 3:
-        raise InputError(f"catalogue {path}: position needs 2 or 3 column names, found {len(places)}")
-    u, v, depth = (places[axis] for axis in ALONG[view["along"]])
+        wanted = "2 or 3" if view.get("along", "z") is not None else "3"
+        raise InputError(f"catalogue {path}: position needs {wanted} column names, found {len(places)}")
+    u, v, depth = (places[axis] for axis in ALONG[view["along"] or "z"])
     return u, v, depth
 
 
-def _refuse_bad_rows(path: Path, names: Sequence[str], places: tuple[np.ndarray, ...]) -> None:
+def _nearest_images(
+    places: list[np.ndarray], view: dict[str, Any]
+) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
+    """For a turned camera, rows and places (u, v, depth): of each object's images in the view the one nearest its centre.
+
+    Turned, one object may be seen at several places that have nothing to do with each other; it counts once.
+    """
+    sides = tuple((float(low), float(high)) for low, high in (view["u"], view["v"], view["depth"]))
+    box = np.array(view["box"], dtype=np.float64) if view.get("periodic") else None
+    position = np.column_stack(places).astype(np.float64)
+    seen, which = images_seen(position, np.zeros(len(position)), np.array(view["vectors"]), sides, 0.0, box)  # type: ignore[arg-type]
+    inside = _inside(seen[:, 0], sides[0]) & _inside(seen[:, 1], sides[1])
+    seen, which = seen[inside], which[inside]
+    far = ((seen - np.mean(sides, axis=1)) ** 2).sum(axis=1)
+    order = np.lexsort((far, which))
+    first = order[np.unique(which[order], return_index=True)[1]]
+    return which[first] + 1, seen[first, 0], seen[first, 1], seen[first, 2]
+
+
+def _refuse_bad_rows(path: Path, names: Sequence[str], places: Sequence[np.ndarray]) -> None:
     bad = np.flatnonzero(~np.all([np.isfinite(place) for place in places], axis=0))
     if len(bad):
         first = ", ".join(str(row + 1) for row in bad[:5]) + (", ..." if len(bad) > 5 else "")

@@ -51,11 +51,13 @@ assert RANK == 4, "the loops below are written out for four products"
 
 f32 = np.float32
 _LINE = 32  # room for the column of one product in scratch
-BATCH = 128
+BATCH = 256
 """Particles measured at a time."""
 TINY_PX = 4
 """Pixels each way that the smallest stamps touch at most: those of which most fall on one pixel."""
 _TINY, _SMALL, _SINGLE, _SHARED, _DOUBLE, _WIDE = range(6)
+"""Ways of drawing, by the pixels that a stamp touches each way: at most 4, 8, 16, 24, 32, and more."""
+SOME_TINY = 1 << _TINY
 
 
 def _room():
@@ -149,8 +151,8 @@ def _sum(scratch, row, x0, x1, x2, x3):
 
 @njit(**FAST)
 def _measure(records, order, scale, corners, value, channels, strides, stamp, room):
-    """Where the stamps of some particles lie: whole numbers into places, others into sizes. Returns the largest half
-    width of all but the wide, and how many are tiny and wide.
+    """Where the stamps of some particles lie: whole numbers into places, others into sizes. Returns the ways that occur, a
+    bit for each.
 
     Apart from drawing, as the compiler makes vectors of it, and as the lengths of loops over rows are guessed wrong by
     the machine for every second particle, which costs little where the right ones are at hand (a third of all time
@@ -160,7 +162,7 @@ def _measure(records, order, scale, corners, value, channels, strides, stamp, ro
     places, sizes, _ = room
     corner, aside = corners
     one, share = np.int32(1), scale * scale
-    largest, tinies, wides = f32(0.0), np.int32(0), np.int32(0)
+    ways = np.int32(0)
     for i in range(len(order)):
         index = order[i]
         sizes[0, i], sizes[1, i], sizes[5, i] = records[index, 0], records[index, 1], records[index, 2]
@@ -186,16 +188,14 @@ def _measure(records, order, scale, corners, value, channels, strides, stamp, ro
         places[1, i] = rows
         places[2, i] = min(np.int32(inverse * inverse * density + f32(0.5)), np.int32(NODES - 1))
         places[3, i] = way
+        ways |= one << way
         sizes[0, i] = f32(left) - x
         sizes[1, i] = f32(top) - y
         sizes[2, i] = inverse
         sizes[3, i] *= share
         sizes[4, i] *= share
         sizes[5, i] = r
-        largest = max(largest, half if r <= f32(LARGE_PX) else f32(0.0))
-        tinies += one if most <= TINY_PX else np.int32(0)
-        wides += one if r > f32(LARGE_PX) else np.int32(0)
-    return largest, tinies, wides
+    return ways
 
 
 @njit(**FAST)
@@ -220,23 +220,32 @@ def draw_some(flat, tiny, wide, channels, strides, records, order, scale, corner
 
     Returns
     -------
-    float32, bool
-        The largest half width of these stamps in pixels; whether some were tiny.
+    int
+        The ways that their stamps were drawn, as `reach_of` takes them; SOME_TINY among them.
     """
-    largest, some_tiny = f32(0.0), False
+    all_ways = 0
     for start in range(0, len(order), BATCH):
         some = order[start : start + BATCH]
-        reach, tinies, wides = _measure(records, some, scale, corners, value, channels, strides, stamp, room)
-        largest, some_tiny = max(largest, reach), some_tiny or tinies > 0
+        ways = _measure(records, some, scale, corners, value, channels, strides, stamp, room)
+        all_ways |= ways
         _add(flat, tiny, channels, strides, len(some), stamp, room)
-        if wides == 0:
+        if ways >> _WIDE == 0:
             continue
         places, sizes, _ = room
         for i in range(len(some)):
             if places[3, i] == _WIDE:
                 x, y = records[some[i], 0] * scale + f32(MARGIN), records[some[i], 1] * scale + f32(MARGIN)
                 draw_wide(wide, channels, x, y, sizes[5, i], sizes[3, i], sizes[4, i], stamp)
-    return largest, some_tiny
+    return all_ways
+
+
+@njit(**FAST)
+def reach_of(ways):
+    """Pixels that stamps drawn in these ways touch at most beyond that of the particle."""
+    for way, pixels in ((_DOUBLE, 32), (_SHARED, 24), (_SINGLE, 16), (_SMALL, 8)):
+        if ways >> way & 1:
+            return pixels // 2
+    return TINY_PX // 2
 
 
 @njit(**FAST)

@@ -116,10 +116,9 @@ def _opened(x, y, r):
 
 
 @njit(nogil=True, cache=True, error_model="numpy")
-def _route(
+def _locate(
     position,
     radius,
-    values,
     axes,
     u_low,
     v_high,
@@ -131,43 +130,49 @@ def _route(
     local,
     top,
     place_bits,
-    starts,
-    records,
+    whole,
+    found,
+    counts,
 ):
-    """Count records for each bucket into `starts` (records empty), or place them from `starts` on."""
-    fill = len(records) > 0
-    channels = values.shape[1]
+    """Where each particle is drawn: a row of `whole` (bucket, particle) and of `found` (x, y, radius in pixels) for each
+    bucket that takes it, one more in `counts` of the bucket. Returns the rows, or -1 where there are too few of them.
+    """
     slabs = len(edges) - 1
     region_px = TILE << local
     region_rows, region_columns = -(-rows // region_px), -(-columns // region_px)
     regions = region_rows * region_columns
     per_u, per_v, per_depth = period[0] / pixel, period[1] / pixel, period[2]
+    limits = LARGE_PX * 2.0 ** np.arange(top)
+    number = 0
     for index in range(len(position)):
         depth = position[index, axes[2]]
         if per_depth > 0.0:
-            depth -= per_depth * math.floor((depth - edges[0]) / per_depth)
-        slab = np.searchsorted(edges, depth, side="right") - 1
-        if slab < 0 or slab >= slabs:
+            depth -= per_depth * np.floor((depth - edges[0]) / per_depth)
+        if depth < edges[0] or depth >= edges[slabs]:
             continue
+        slab = 0 if slabs == 1 else np.searchsorted(edges, depth, side="right") - 1
         r = radius[index] / pixel
         level = 0
-        while level < top and r > LARGE_PX * (1 << level):
-            level += 1
+        for limit in limits:
+            level += r > limit
         # One pixel more than the kernel reaches, and the pad that the next finer level interpolates from.
         halo = r + (1 << level) * (1.0 if level == 0 else 1.0 + PAD)
         grain = 2.0 ** (level - place_bits)
         x = (position[index, axes[0]] - u_low) / pixel
         y = (v_high - position[index, axes[1]]) / pixel
-        first_x, last_x, first_y, last_y = 0, 0, 0, 0
-        if per_u > 0.0:
-            first_x, last_x = math.ceil((-halo - x) / per_u), math.floor((columns + halo - x) / per_u)
-        if per_v > 0.0:
-            first_y, last_y = math.ceil((-halo - y) / per_v), math.floor((rows + halo - y) / per_v)
-        for image_y in range(first_y, last_y + 1):
+        # Of most, one image lies in the view, well inside of one region.
+        first_x = last_x = -np.floor(x / per_u) if per_u > 0.0 else 0.0
+        first_y = last_y = -np.floor(y / per_v) if per_v > 0.0 else 0.0
+        xx, yy = x + first_x * per_u, y + first_y * per_v
+        if per_u > 0.0 and not (halo < xx < columns - halo and columns + halo - per_u < xx < per_u - halo):
+            first_x, last_x = np.ceil((-halo - x) / per_u), np.floor((columns + halo - x) / per_u)
+        if per_v > 0.0 and not (halo < yy < rows - halo and rows + halo - per_v < yy < per_v - halo):
+            first_y, last_y = np.ceil((-halo - y) / per_v), np.floor((rows + halo - y) / per_v)
+        for image_y in range(int(first_y), int(last_y) + 1):
             yy = y + image_y * per_v
             if yy + halo < 0.0 or yy - halo > rows:
                 continue
-            for image_x in range(first_x, last_x + 1):
+            for image_x in range(int(first_x), int(last_x) + 1):
                 xx = x + image_x * per_u
                 if xx + halo < 0.0 or xx - halo > columns:
                     continue
@@ -179,17 +184,29 @@ def _route(
                     bottom_row = min(region_rows - 1, int(math.floor((yy + halo) / region_px)))
                     left = max(0, int(math.floor((xx - halo) / region_px)))
                     right = min(region_columns - 1, int(math.floor((xx + halo) / region_px)))
+                if number + (bottom_row - top_row + 1) * (right - left + 1) > len(whole):
+                    return -1
                 for row in range(top_row, bottom_row + 1):
                     for column in range(left, right + 1):
                         key = _key(row * region_columns + column, slab, level, slabs, local, regions, top)
-                        if fill:
-                            place = starts[key]
-                            records[place, 0] = drawn_x - column * region_px
-                            records[place, 1] = drawn_y - row * region_px
-                            records[place, 2] = max(r, OPEN_PX)
-                            for channel in range(channels):
-                                records[place, 3 + channel] = values[index, channel]
-                        starts[key] += 1
+                        whole[number, 0], whole[number, 1] = key, index
+                        found[number, 0] = drawn_x - column * region_px
+                        found[number, 1] = drawn_y - row * region_px
+                        found[number, 2] = max(r, OPEN_PX)
+                        counts[key] += 1
+                        number += 1
+    return number
+
+
+@njit(nogil=True, cache=True)
+def _sort(whole, found, values, starts, records):
+    """Records of what was found, bucket by bucket from `starts` on, which end at the next bucket's."""
+    for number in range(len(whole)):
+        place = starts[whole[number, 0]]
+        starts[whole[number, 0]] += 1
+        records[place, 0], records[place, 1], records[place, 2] = found[number, 0], found[number, 1], found[number, 2]
+        for channel in range(values.shape[1]):
+            records[place, 3 + channel] = values[whole[number, 1], channel]
 
 
 class Buckets:
@@ -235,14 +252,16 @@ class Buckets:
         starts : int64 (buckets + 1,)
         records : float32 (m, 3 + channels), x, y and radius in level-0 pixels from the region's corner, then values
         """
-        counts = np.zeros(self.plan.buckets, dtype=np.int64)
-        nothing = np.empty((0, 3 + values.shape[1]), dtype=np.float32)
-        _route(position, radius, values, *self._fixed, counts, nothing)
+        room, number = len(position) + len(position) // 4 + 64, -1
+        while number < 0:
+            whole, found = np.empty((room, 2), dtype=np.int32), np.empty((room, 3), dtype=np.float32)
+            counts = np.zeros(self.plan.buckets, dtype=np.int64)
+            number = _locate(position, radius, *self._fixed, whole, found, counts)
+            room *= 2
         starts = np.zeros(self.plan.buckets + 1, dtype=np.int64)
         np.cumsum(counts, out=starts[1:])
-        records = np.empty((starts[-1], 3 + values.shape[1]), dtype=np.float32)
-        if len(records):
-            _route(position, radius, values, *self._fixed, starts[:-1].copy(), records)
+        records = np.empty((number, 3 + values.shape[1]), dtype=np.float32)
+        _sort(whole[:number], found[:number], values, starts[:-1].copy(), records)
         return starts, records
 
     def add(self, starts: NDArray[np.int64], records: NDArray[np.float32]) -> None:

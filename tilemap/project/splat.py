@@ -10,7 +10,7 @@ import numpy as np
 from numba import njit
 from numpy.typing import NDArray
 
-from tilemap.project.products import FAST, MARGIN, TINY_PX, draw_some, room_for_drawing
+from tilemap.project.products import FAST, MARGIN, SOME_TINY, draw_some, reach_of, room_for_drawing
 from tilemap.project.stamps import SMALL_PX, Stamps
 
 CELL_PX = 48
@@ -94,21 +94,18 @@ def _draw(image, wide, channels, records, order, scale, value, stamp):
         here = row * CELL_PX, column * CELL_PX
         flat, strides = on_lines if crowded else on_image, (pile_stride if crowded else stride, pile_stride)
         corners = (here if crowded else (0, 0), here)
-        largest, piled = np.float32(0.0), False
+        ways = 0
         for first in range(start, stop, RUN):
             some = order[first : min(first + RUN, stop)]
-            reach, tiny = draw_some(
-                flat, on_pile, wide, channels, strides, records, some, scale, corners, value, stamp, room
-            )
-            largest, piled = max(largest, reach), piled or tiny or crowded
-            touched = int(largest if crowded else min(largest, np.float32(TINY_PX))) + 2
+            ways |= draw_some(flat, on_pile, wide, channels, strides, records, some, scale, corners, value, stamp, room)
+            touched = reach_of(ways if crowded else 0) + 1
             box[0] = MARGIN - touched if row > 0 else 0  # cells at the rim also hold what lies outside
             box[1] = MARGIN + CELL_PX + touched if row < cells_y - 1 else side
             box[2] = MARGIN - touched if column > 0 else 0
             box[3] = MARGIN + CELL_PX + touched if column < cells_x - 1 else side
-            if crowded and 2.0 * reach > TINY_PX - 1:  # some touch more pixels
+            if crowded and ways != SOME_TINY:
                 _move(lines, pile, channels, box, 0, 0)
-        if piled:
+        if crowded or ways & SOME_TINY:
             _move(pile, image, channels, box, *here)
         start = stop
 

@@ -3,7 +3,7 @@
 
 import { windowCoding } from './coding.js';
 
-/** @typedef {{name: string, title: string, kind: 'sum'|'mean'|'dispersion', weight: string|null, mean?: string, coding: 'log'|'linear', low: number, step: number,
+/** @typedef {{name: string, title: string, kind: 'sum'|'mean'|'dispersion'|'peak', weight: string|null, mean?: string, coding: 'log'|'linear', low: number, step: number,
  *   unit: string, total_unit: string, totals: number[]|null, percentiles: Record<string, number>, range: [number, number]}} Sheet */
 /** @typedef {{name: string, redshift: number|null, scale_factor: number|null, age_gyr: number|null,
  *   kpc_per_arcsec_comoving: number|null, kpc_per_arcsec_proper: number|null, sheets: Sheet[],

@@ -123,6 +123,7 @@ async function make(recipe, signal, fresh) {
   const [tiles, weights, means] = await Promise.all([all(recipe.tiles), recipe.weights && all(recipe.weights), recipe.means && all(recipe.means)]);
   if (tiles.every((codes) => codes === null)) return { codes: null, values: null, shown };
   if (tiles.length === 1) return { codes: tiles[0], values: null, shown };
+  if (kind === 'peak') return { codes: highest(tiles), values: null, shown };
   let values;
   if (kind === 'sum') values = sum(tiles, coding);
   else if (means && weights && meanCoding && weightCoding) values = dispersion(tiles, means, weights, coding, meanCoding, weightCoding);
@@ -162,6 +163,16 @@ function sum(tiles, coding) {
     }
   }
   return Float32Array.from(total, (x, i) => (some[i] ? x : NaN));
+}
+
+/** Of peaks the highest is shown, and codes grow with the value. @param {(Uint16Array|null)[]} tiles */
+function highest(tiles) {
+  const most = new Uint16Array(PIXELS);
+  for (const codes of tiles) {
+    if (!codes) continue;
+    for (let i = 0; i < PIXELS; i++) if (codes[i] > most[i]) most[i] = codes[i];
+  }
+  return most;
 }
 
 /** Means are weighted by their weight sheet. @param {(Uint16Array|null)[]} tiles @param {(Uint16Array|null)[]|null} weights @param {any} coding @param {any} weightCoding */

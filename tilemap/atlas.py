@@ -210,7 +210,7 @@ class Atlas:
         slabs : int or slice, optional
             One slab, or those that the slice takes; counted from 0, negative from the end. All, where it is left out.
             Slabs are summed; means are weighted by their weight sheet; dispersions are put together about the common
-            mean.
+            mean; of a sheet of peaks the highest is taken, of slabs and of pixels.
         pixels : int, optional
             Columns of the piece, so that a pixel is width / pixels each way. Values are then averages over the new
             pixels of the coarsest level that is at least as fine, each old pixel counting by the area they share: sums
@@ -370,7 +370,7 @@ class Atlas:
         weight, mean = (
             coded(self.sheet(sheet[role], epoch)) if sheet.get(role) else None for role in ("weight", "mean")
         )
-        return combine(coded(sheet), weight, (0,) if whole else slabs, rows, columns, mean)
+        return combine(coded(sheet), weight, (0,) if whole else slabs, rows, columns, mean, sheet["kind"] == "peak")
 
     def _piece(
         self, values: NDArray[np.float32], sheet: dict[str, Any], epoch: str, slabs: tuple[int, ...], window: _Window

@@ -146,7 +146,7 @@ def _check_sheet(build: BuildFile, name: str, sheet: Sheet) -> None:
         raise InputError(
             f"{here}.{kind}: species {sheet.species!r} has no mass: give snapshot.species.{sheet.species}.mass"
         )
-    if kind == "sum":
+    if kind != "mean":
         return
     if quantity == "count":
         raise InputError(f"{here}.mean: the mean of a count is always one: use sum: count")

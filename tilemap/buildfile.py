@@ -37,7 +37,7 @@ from tilemap.quantities import split_quantity, unit_named
 
 DERIVED = ("temperature_from", "density_squared_from", "line_of_sight")
 """Keys of a field that is worked out from datasets; the formulas are in `sources.derived`."""
-KINDS = ("sum", "mean", "dispersion")
+KINDS = ("sum", "mean", "dispersion", "peak")
 """Keys of a sheet that say what it shows."""
 
 
@@ -212,7 +212,8 @@ class View(_Keys):
 class Sheet(_Keys):
     """One projected quantity: exactly one of the `KINDS` names it.
 
-    `sum` and `mean` name a field, mass or count; `dispersion` a mean sheet, about whose values it is the spread.
+    `sum` and `mean` name a field, mass or count; `dispersion` a mean sheet, about whose values it is the spread. `peak`
+    is a sum whose coarser pixels, and slabs together, hold the highest value in place of the average, or the sum.
     """
 
     title: str | None = None
@@ -220,6 +221,7 @@ class Sheet(_Keys):
     sum: str | None = None
     mean: str | None = None
     dispersion: str | None = None
+    peak: str | None = None
     weight: str | None = None
     unit: UnitText
     coding: Literal["log", "linear"] = "log"
@@ -231,11 +233,16 @@ class Sheet(_Keys):
         """Which of the `KINDS` it is."""
         return next(kind for kind in KINDS if getattr(self, kind) is not None)
 
+    @property
+    def summed(self) -> str | None:
+        """The field whose sum per area it shows; None for means and dispersions."""
+        return self.sum if self.sum is not None else self.peak
+
     @pydantic.model_validator(mode="after")
     def _one_kind(self) -> Sheet:
         if sum(getattr(self, kind) is not None for kind in KINDS) != 1:
             raise ValueError(
-                "give sum: or mean: and the name of a field, mass or count, or dispersion: and that of a mean sheet, "
+                "give sum:, mean: or peak: and the name of a field, mass or count, or dispersion: and that of a mean sheet, "
                 "and no more than one"
             )
         if self.mean is not None and self.weight is None:

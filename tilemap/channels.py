@@ -250,7 +250,7 @@ class SpeciesPlan:
             if self.ranges[plan.plane, 0] < 0:
                 more = "" if plan.weight is not None else f", and a step in {sheet.unit}"
                 raise InputError(
-                    f"sheet {plan.name}: {sheet.sum or sheet.mean} goes down to {self.ranges[plan.plane, 0]:.6g} "
+                    f"sheet {plan.name}: {sheet.summed or sheet.mean} goes down to {self.ranges[plan.plane, 0]:.6g} "
                     f"{plan.total_unit}, and log coding holds positive values only: write coding: linear{more}"
                 )
             if plan.weight is None:

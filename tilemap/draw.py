@@ -21,7 +21,9 @@ from tilemap.project.scatter import Buckets, Plan
 from tilemap.project.smoothing import neighbour_radii
 from tilemap.project.stamps import stamps_for
 from tilemap.project.vcycle import Cycle
+from tilemap.pyramid.coding import Coding
 from tilemap.pyramid.grid import TILE
+from tilemap.pyramid.peaks import PeakWriter
 from tilemap.pyramid.reduce import halve, plane_sums
 from tilemap.pyramid.writer import WHOLE, SheetWriter
 from tilemap.runners.local import LocalRunner
@@ -116,12 +118,7 @@ class SpeciesDrawing:
         pixels = plan.rows * plan.columns
         codings = [self.planes.coding(sheet, sums[sheet.plane] / pixels) for sheet in sheets]
         writers = [
-            SheetWriter(
-                folder / sheet.name,
-                (plan.rows, plan.columns),
-                plan.slabs,
-                sheet.of_planes(coding, self.planes.scale(sheet)),
-            )
+            self._writer(sheet, folder, sheet.of_planes(coding, self.planes.scale(sheet)))
             for sheet, coding in zip(sheets, codings, strict=True)
         ]
         bases = [self.cycle.base(self.buckets, slab, self.runner) for slab in range(plan.slabs)]
@@ -141,10 +138,17 @@ class SpeciesDrawing:
             plane_totals = totals[:, sheet.plane] * self.planes.scales[sheet.plane]
             totals_here = [float(total) for total in plane_totals]
             entry = describe_sheet(self.build, sheet, coding, totals_here, self.planes.floor(sheet))
-            entry |= self._summary(sheet, coarse[-1])
+            if isinstance(writer, PeakWriter):
+                entry |= _summary(coding.decode(writer.finish(SUMMARY_PX)).astype(np.float64))
+            else:
+                entry |= _summary(self._small(sheet, coarse[-1]))
             writer.close(entry)
             entries.append(entry)
         return entries
+
+    def _writer(self, sheet: SheetPlan, folder: Path, coding: Coding) -> SheetWriter:
+        given = folder / sheet.name, (self.plan.rows, self.plan.columns), self.plan.slabs, coding
+        return PeakWriter(*given, self.plan.local) if sheet.sheet.kind == "peak" else SheetWriter(*given)
 
     def _region(
         self,
@@ -205,15 +209,20 @@ class SpeciesDrawing:
             if level + 1 < plan.levels:
                 image = halve(image)
 
-    def _summary(self, sheet: SheetPlan, image: NDArray[np.float32]) -> dict[str, Any]:
+    def _small(self, sheet: SheetPlan, image: NDArray[np.float32]) -> NDArray[np.float64]:
+        """A sheet's values, in its unit, at the finest level from `local` on that is small enough for percentiles."""
         while max(image.shape[1:]) > SUMMARY_PX:
             image = halve(image)
-        values = self.planes.values(sheet, image).astype(np.float64) * (sheet.factor * self.planes.scale(sheet))
-        values = values[np.isfinite(values) & (values != 0)]
-        if not len(values):
-            return {"percentiles": {}, "range": None}
-        points = np.percentile(values, PERCENTILES)
-        return {
-            "percentiles": {f"{p:g}": float(point) for p, point in zip(PERCENTILES, points, strict=True)},
-            "range": [float(values.min()), float(values.max())],
-        }
+        return self.planes.values(sheet, image).astype(np.float64) * (sheet.factor * self.planes.scale(sheet))
+
+
+def _summary(values: NDArray[np.float64]) -> dict[str, Any]:
+    """Percentiles and range of what is there, as `atlas.json` says them."""
+    values = values[np.isfinite(values) & (values != 0)]
+    if not len(values):
+        return {"percentiles": {}, "range": None}
+    points = np.percentile(values, PERCENTILES)
+    return {
+        "percentiles": {f"{p:g}": float(point) for p, point in zip(PERCENTILES, points, strict=True)},
+        "range": [float(values.min()), float(values.max())],
+    }

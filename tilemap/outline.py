@@ -159,6 +159,8 @@ def inside(
     mean, spread = _moments(values, weight)
     area = float(share.sum()) * pixel**2
     total, total_unit = _total(atlas, of, float((dense * share).sum()) * pixel**2, epoch)
+    if described["kind"] == "peak":
+        total = math.nan  # the highest of several pixels add up to nothing
     within = min(x.min(), y.min()) >= 0 and (np.array([x.max(), y.max()]) <= atlas.info["pixels"]).all()
     return Inside(
         area=area,

@@ -42,8 +42,8 @@ def plan_species(build: BuildFile, source: Source, pixel: float) -> list[Species
         made = []
         for name, sheet in sheets.items():
             factor, total_unit = _factor(build, source, name, sheet, pixel)
-            if sheet.sum is not None:
-                made.append(SheetPlan(name, sheet, number(Plane(sheet.sum)), None, factor, total_unit))
+            if sheet.summed is not None:
+                made.append(SheetPlan(name, sheet, number(Plane(sheet.summed)), None, factor, total_unit))
                 continue
             averaged, weighting = quantity(build, sheet), build.sheets[str(weight_of(build, sheet))].sum
             assert weighting is not None
@@ -59,7 +59,7 @@ def plan_species(build: BuildFile, source: Source, pixel: float) -> list[Species
 
 def quantity(build: BuildFile, sheet: Sheet) -> str:
     """The field, mass or count that a sheet shows."""
-    return str(sheet.sum or sheet.mean or build.sheets[str(sheet.dispersion)].mean)
+    return str(sheet.summed or sheet.mean or build.sheets[str(sheet.dispersion)].mean)
 
 
 def weight_of(build: BuildFile, sheet: Sheet) -> str | None:
@@ -72,7 +72,7 @@ def _factor(build: BuildFile, source: Source, name: str, sheet: Sheet, pixel: fl
     shown = quantity(build, sheet)
     plain = source.unit(sheet.species, shown)
     per = plain
-    if sheet.sum is not None:
+    if sheet.summed is not None:
         side = pixel * u.Unit(build.view.unit)
         if sheet.area == "proper":
             redshift = source.facts.redshift
@@ -87,8 +87,8 @@ def _factor(build: BuildFile, source: Source, name: str, sheet: Sheet, pixel: fl
         named = str(plain) or "no unit of its own"
         raise InputError(
             f"{build.path}: sheets.{name}.unit is {sheet.unit}: {shown} of {sheet.species} has {named}, "
-            + (f"so a sum needs one such as {plain / u.Unit(area)}" if sheet.sum else "or one like it: write that, ")
-            + ("" if sheet.sum else f"or say in snapshot.species.{sheet.species}.fields what unit the field is in")
+            + (f"so a sum needs one such as {plain / u.Unit(area)}" if sheet.summed else "or one like it: write that, ")
+            + ("" if sheet.summed else f"or say in snapshot.species.{sheet.species}.fields what unit the field is in")
         ) from None
     return factor, str(plain) if plain != u.dimensionless_unscaled else ""
 

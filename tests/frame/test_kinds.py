@@ -12,7 +12,10 @@ from tilemap.build_atlas import build_atlas
 from tilemap.server.app import make_app
 
 PIXEL = BOX / 1024
-SHEETS = {"spread": {"species": "gas", "dispersion": "velocity", "unit": "km/s", "coding": "linear"}}
+SHEETS = {
+    "spread": {"species": "gas", "dispersion": "velocity", "unit": "km/s", "coding": "linear"},
+    "peak": {"species": "gas", "peak": "mass", "unit": "Msun/kpc2"},
+}
 
 
 @pytest.fixture(scope="module")
@@ -42,4 +45,18 @@ def test_the_reading_is_the_number_in_the_atlas(open_screen, address, built, she
         screen.page.mouse.move(x, y)
         u, v = screen.under(x, y)
         expected = float(built.read(sheet, (u, v), PIXEL, PIXEL, slabs=slabs).values[0, 0])
+        assert screen.value() == pytest.approx(expected, rel=2e-6)
+
+
+@pytest.mark.parametrize(("depth", "slabs"), [("", None), ("2:6", slice(1, 3))])
+def test_seen_from_afar_a_peak_reads_as_the_highest_of_its_pixels(open_screen, address, built, depth, slabs):
+    window = f"&depth={depth}" if depth else ""
+    screen = open_screen(f"#u=4&v=4&width=18&sheet=peak{window}", address=address)
+    values = built.read("peak", slabs=slabs).values
+    coarse = values.reshape(512, 2, 512, 2).max(axis=(1, 3))
+    for u, v in [(4.1, 4.2), (1.7, 6.9), (7.4, 0.6)]:
+        x, y = map(round, screen.at(u, v))
+        screen.page.mouse.move(x, y)
+        u, v = screen.under(x, y)
+        expected = float(coarse[int((BOX - v) / (2 * PIXEL)), int(u / (2 * PIXEL))])
         assert screen.value() == pytest.approx(expected, rel=2e-6)

@@ -1,4 +1,5 @@
-"""Tiles of some slabs in, new pixels out: sums added up, means weighted, dispersions put together about the common mean."""
+"""Tiles of some slabs in, new pixels out: sums added up, means weighted, dispersions put together about the
+common mean, the highest taken of peaks."""
 
 from __future__ import annotations
 
@@ -17,7 +18,7 @@ from scipy import sparse
 from tilemap.pyramid.coding import Coding
 from tilemap.pyramid.grid import TILE
 from tilemap.pyramid.reader import ArrayReader
-from tilemap.pyramid.resample import Canvas, tiles_used
+from tilemap.pyramid.resample import Canvas, Peaks, tiles_used
 
 LEAST_WEIGHT = 1e-200
 """Stands in for a weight that was too low to be written: it counts only where nothing heavier lies in the pixel."""
@@ -43,6 +44,7 @@ def combine(
     rows: sparse.csc_matrix,
     columns: sparse.csc_matrix,
     mean: Coded | None = None,
+    peak: bool = False,
 ) -> NDArray[np.float32]:
     """New pixels of several slabs together.
 
@@ -56,14 +58,18 @@ def combine(
         How much of each old pixel a new one takes, as `resample.overlaps` gives it.
     mean : Coded, optional
         Of the same level, for a dispersion: what it is about.
+    peak : bool
+        Whether the highest is wanted, of pixels and of slabs.
 
     Returns
     -------
     float32 (new rows, new columns)
         For a sum, the slabs' averages over the new pixels, added; for a mean, the average of weight times value over
         that of the weight; for a dispersion s about means m with weights w, that about the mean M of all,
-        sqrt(sum w (s^2 + m^2) / sum w - M^2). NaN where nothing is, but 0 for a sum in log coding.
+        sqrt(sum w (s^2 + m^2) / sum w - M^2); for a peak, the highest of what a new pixel touches. NaN where nothing is, but 0 for a sum in log coding.
     """
+    if peak:
+        return _highest(sheet, slabs, rows, columns)
     # What decodes to NaN is not there; a sum in log coding is there everywhere, if only as zero.
     everywhere = not math.isnan(sheet.coding.nothing)
     upper, lower, first = Canvas(rows, columns), Canvas(rows, columns), Canvas(rows, columns)
@@ -91,6 +97,16 @@ def combine(
         middle = np.divide(first.values, divisor, out=np.zeros_like(first.values), where=there)
         values = np.sqrt(np.maximum(values - middle**2, 0.0))
     return values.astype(np.float32)
+
+
+def _highest(
+    sheet: Coded, slabs: tuple[int, ...], rows: sparse.csc_matrix, columns: sparse.csc_matrix
+) -> NDArray[np.float32]:
+    peaks = Peaks(rows, columns)
+    for slab, row, column in _places(sheet.reader, slabs, rows, columns):
+        peaks.add(sheet.coding.decode(sheet.reader.codes(slab, row, column)), row * TILE, column * TILE)
+    # Tiles that are empty were left out.
+    return np.where(np.isnan(peaks.values), sheet.coding.nothing, peaks.values).astype(np.float32)
 
 
 def _take(

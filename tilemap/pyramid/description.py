@@ -130,10 +130,10 @@ def _epoch_faults(epoch: Mapping[str, Any], slabs: int) -> Iterator[str]:
             for role, kind in needed.items():
                 if names.get(sheet.get(role), {}).get("kind") != kind:
                     yield f"{at}its {role} is {sheet.get(role)!r}, which is no {kind} sheet of this epoch"
-        elif sheet["kind"] == "sum":
+        elif sheet["kind"] in ("sum", "peak"):
             yield from _total_faults(sheet, unit, slabs, at)
         else:
-            yield f"{at}kind is {sheet['kind']!r}, and must be sum, mean or dispersion"
+            yield f"{at}kind is {sheet['kind']!r}, and must be sum, mean, dispersion or peak"
 
 
 def _total_faults(sheet: Mapping[str, Any], unit: u.UnitBase, slabs: int, at: str) -> Iterator[str]:

@@ -96,7 +96,7 @@ def checks_of(stack: Stack, slabs: Stack | None) -> Iterator[tuple[int, Check]]:
 
 @dataclass(frozen=True)
 class _Average:
-    """Is a tile the average of the four below it? Adds up level 0 in passing."""
+    """Is a tile the average (or what its kind of sheet keeps) of the four below it? Adds up level 0 in passing."""
 
     stack: Stack
     level: int
@@ -116,7 +116,9 @@ class _Average:
             return checked
         if coarse is None:
             return checked
-        if stack.weight is None:
+        if stack.sheet["kind"] == "peak":
+            misfits = _peak_misfits(coarse, parts)
+        elif stack.weight is None:
             misfits = sum_misfits(coarse, parts, stack.coding, 0.25) if coarse.any() or parts.any() else 0
         else:
             try:
@@ -182,7 +184,7 @@ class _Single:
 
 @dataclass(frozen=True)
 class _Whole:
-    """Is a tile of the whole the sum, or the weighted mean, of the slabs? One level says it for all."""
+    """Is a tile of the whole the sum of the slabs, or what its kind of sheet makes of them? One level says it for all."""
 
     stack: Stack
     slabs: Stack
@@ -195,7 +197,9 @@ class _Whole:
         try:
             whole = stack.codes(self.level, 0, self.row, self.column, checked.found)
             parts = self._parts(self.slabs)
-            if stack.weight is None:
+            if stack.sheet["kind"] == "peak":
+                misfits = _peak_misfits(whole, parts)
+            elif stack.weight is None:
                 misfits = sum_misfits(whole, parts, stack.coding, 1.0)
             else:
                 misfits = _weighed_misfits(
@@ -205,7 +209,7 @@ class _Whole:
             return checked
         if misfits:
             path = stack.path(self.level, 0, self.row, self.column)
-            word = {"sum": "sum", "mean": "weighted mean"}.get(stack.sheet["kind"], "dispersion")
+            word = {"mean": "weighted mean", "peak": "highest"}.get(stack.sheet["kind"], stack.sheet["kind"])
             what = f"{_pixels(misfits)} not the {word} of the slabs"
             checked.found.append(Finding(path, what, stack.place(self.level, 0, self.row, self.column)))
         return checked
@@ -214,6 +218,11 @@ class _Whole:
         count = stack.levels[self.level].shape[0]
         # A damaged tile of a slab is put down by the check of its own pyramid.
         return np.stack([stack.codes(self.level, slab, self.row, self.column, []) for slab in range(count)])
+
+
+def _peak_misfits(whole: NDArray[np.uint16], parts: NDArray[np.uint16]) -> int:
+    """How many pixels are not the highest of their parts: to the code, for codes grow with the value."""
+    return int(np.count_nonzero(whole != parts.max(axis=0)))
 
 
 def _weighed_misfits(
@@ -244,6 +253,6 @@ def _pixels(count: int) -> str:
 
 def _mean_word(stack: Stack) -> str:
     if stack.weight is None:
-        return "average"
+        return "highest" if stack.sheet["kind"] == "peak" else "average"
     word = "average" if stack.mean is None else "dispersion"
     return f"{word}, weighted by {stack.sheet['weight']},"

@@ -68,6 +68,13 @@ class _Part:
         """New pixels from old ones, along the first axis."""
         return old if self.weights is None else self.weights @ old
 
+    def highest(self, old: NDArray[np.float64]) -> NDArray[np.float64]:
+        """The highest of the old pixels that each new one touches, along the first axis; NaN counts for nothing."""
+        if self.weights is None:
+            return old
+        # No row is empty: `at` are those that are not.
+        return np.fmax.reduceat(old[self.weights.indices], self.weights.indptr[:-1], axis=0)
+
 
 class Canvas:
     """New pixels being filled from tiles of old ones, of which each is given once.
@@ -99,6 +106,22 @@ class Canvas:
         if key not in self._parts:
             self._parts[key] = _used(self._axes[axis][:, start : start + count])
         return self._parts[key]
+
+
+class Peaks(Canvas):
+    """The same, but for the highest of the old pixels that a new one touches, whatever the part; NaN where none is."""
+
+    def __init__(self, rows: sparse.csc_matrix, columns: sparse.csc_matrix) -> None:
+        super().__init__(rows, columns)
+        self.values.fill(np.nan)
+
+    def add(self, tile: NDArray[np.floating], row: int, column: int) -> None:
+        height = min(tile.shape[0], self._axes[0].shape[1] - row)
+        width = min(tile.shape[1], self._axes[1].shape[1] - column)
+        rows, columns = self._part(0, row, height), self._part(1, column, width)
+        part = rows.highest(columns.highest(tile[:height, :width].T.astype(np.float64)).T)
+        at = np.ix_(rows.at, columns.at)
+        self.values[at] = np.fmax(self.values[at], part)
 
 
 def tiles_used(weights: sparse.csc_matrix, tile: int) -> list[int]:

@@ -97,7 +97,7 @@ def _check_tiles(
     results = pool.map(lambda task: task[2](), tasks)
     for done, ((stack, slab, _), checked) in enumerate(zip(tasks, results, strict=True), start=1):
         yield from checked.found
-        if not stack.whole and stack.sheet["kind"] == "sum":
+        if not stack.whole and stack.sheet["kind"] in ("sum", "peak"):
             total = totals.setdefault((id(stack), slab), Checked())
             total.least += checked.least
             total.most += checked.most

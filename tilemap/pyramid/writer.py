@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import threading
+from collections.abc import Iterator
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -50,16 +52,20 @@ class SheetWriter:
         corner : (row, column) in tiles
         values : float32 (rows, columns), in the sheet's unit
         """
-        rows, columns = values.shape
-        for i in range(-(-rows // TILE)):
-            for j in range(-(-columns // TILE)):
-                piece = values[i * TILE : (i + 1) * TILE, j * TILE : (j + 1) * TILE]
-                codes = self.coding.encode(piece)
-                if codes.shape != (TILE, TILE):
-                    tile = np.zeros((TILE, TILE), dtype=np.uint16)
-                    tile[: codes.shape[0], : codes.shape[1]] = codes
-                    codes = tile
-                self._add(level, slab, corner[0] + i, corner[1] + j, pack_tile(codes))
+        for row, column, piece in _tiles(values, corner):
+            self._put_tile(level, slab, row, column, self.coding.encode(piece))
+
+    def _put_codes(self, level: int, slab: int, corner: tuple[int, int], codes: NDArray[np.uint16]) -> None:
+        """The same as `put`, of codes."""
+        for row, column, piece in _tiles(codes, corner):
+            self._put_tile(level, slab, row, column, piece)
+
+    def _put_tile(self, level: int, slab: int, row: int, column: int, codes: NDArray[np.uint16]) -> None:
+        if codes.shape != (TILE, TILE):
+            tile = np.zeros((TILE, TILE), dtype=np.uint16)
+            tile[: codes.shape[0], : codes.shape[1]] = codes
+            codes = tile
+        self._add(level, slab, row, column, pack_tile(codes))
 
     def put_nothing(self, level: int, slab: int, corner: tuple[int, int], shape: tuple[int, int]) -> None:
         """The same for a piece of (rows, columns) pixels in which there is nothing."""
@@ -96,3 +102,11 @@ class SheetWriter:
             create_group(stack, attributes)
             for level, size in enumerate(self.shapes):
                 create_array(stack / str(level), (deep, *size), attributes)
+
+
+def _tiles(pixels: NDArray[Any], corner: tuple[int, int]) -> Iterator[tuple[int, int, NDArray[Any]]]:
+    """Row and column of each tile that an image with this corner touches, and what it has of it."""
+    for i in range(-(-pixels.shape[0] // TILE)):
+        for j in range(-(-pixels.shape[1] // TILE)):
+            piece = pixels[i * TILE : (i + 1) * TILE, j * TILE : (j + 1) * TILE]
+            yield corner[0] + i, corner[1] + j, piece

@@ -110,6 +110,12 @@ def test_nothing_else_is_served(client, path):
     assert list(json.loads(response.data)) == ["error"]
 
 
+def test_a_page_can_ask_which_atlases_lie_beside_its_own(client, made_atlas):
+    listed = client.get("/atlases.json").json
+    stored = json.loads((made_atlas / "atlas.json").read_text())
+    assert {"name": "field"} | {key: stored[key] for key in ("id", "title", "view")} in listed
+
+
 def test_atlas_json_is_sent_as_it_is_stored(client, made_atlas):
     response = client.get("/field/atlas.json")
     assert response.data == (made_atlas / "atlas.json").read_bytes()
@@ -118,7 +124,16 @@ def test_atlas_json_is_sent_as_it_is_stored(client, made_atlas):
 
 @pytest.mark.parametrize(
     "path",
-    ["/", "/list.css", "/field/", "/field/frame/view.js", "/field/atlas.json", "/field/picture.png", "/field/objects"],
+    [
+        "/",
+        "/list.css",
+        "/atlases.json",
+        "/field/",
+        "/field/frame/view.js",
+        "/field/atlas.json",
+        "/field/picture.png",
+        "/field/objects",
+    ],
 )
 def test_what_may_change_is_asked_for_again_and_sent_only_when_changed(client, path):
     first = client.get(path)

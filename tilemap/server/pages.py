@@ -11,7 +11,7 @@ from flask import Blueprint, Response, abort, current_app, redirect, render_temp
 from werkzeug.utils import safe_join
 
 from tilemap.errors import InputError
-from tilemap.server.answers import answer, opened_or_404, shelf
+from tilemap.server.answers import answer, json_answer, opened_or_404, shelf
 from tilemap.server.picture import picture_png
 from tilemap.server.shelf import Opened, Served
 
@@ -53,6 +53,14 @@ def atlases() -> Response:
     listed = [(served, served.current()) for served in shelf()]
     page = render_template("list.html", atlases=[_card(served, opened) for served, opened in listed if opened])
     return answer(page.encode(), "text/html")
+
+
+@pages.get("/atlases.json")
+def atlas_list() -> Response:
+    """Names, titles and views of the atlases: what can be looked at beside another."""
+    opened = [(served.name, served.current()) for served in shelf()]
+    listed = [{"name": name, **{key: at.info[key] for key in ("id", "title", "view")}} for name, at in opened if at]
+    return json_answer(listed)
 
 
 @pages.get("/list.css")

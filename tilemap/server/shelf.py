@@ -21,7 +21,7 @@ if TYPE_CHECKING:
     from tilemap.catalogue.query import Objects
     from tilemap.pyramid.store import ArrayReader
 
-RESERVED = {"list.css"}  # what the server itself has beside the atlases
+RESERVED = {"list.css", "atlases.json"}  # what the server itself has beside the atlases
 
 
 class Opened:

@@ -2,39 +2,45 @@
 // Out: a view that a hand can move, and a link that brings it back.
 
 import { Atlas, Layer } from './atlas.js';
-import { CensusEdge } from './census.js';
+import { CensusEdge, NONE } from './census.js';
 import { DepthEdge } from './depth.js';
-import { make, words } from './dom.js';
+import { Divider } from './divider.js';
+import { make } from './dom.js';
 import { folding } from './folding.js';
 import { listen } from './gestures.js';
 import { PixelGrid } from './grid.js';
 import { keyboard, keysNote } from './keys.js';
+import { read } from './link.js';
 import { Linking } from './linking.js';
 import { Looks } from './looks.js';
 import { MapSurface } from './map.js';
 import { Markers } from './markers.js';
 import { Motion } from './motion.js';
+import { Neighbours } from './neighbours.js';
 import { Catalogue } from './objects.js';
 import { Reading } from './reading.js';
 import { Rulers } from './rulers.js';
 import { ScaleEdge } from './scale.js';
+import { Sheets } from './sheets.js';
+import { mateOf, sheetOf } from './side.js';
 import { State } from './state.js';
 import { Status } from './status.js';
 import { Tape } from './tape.js';
 import { TapeNote } from './tape-note.js';
 import { Tiles } from './tiles.js';
+import { Title } from './title.js';
 import { ToneEdge } from './tone.js';
-import { fixed } from './units.js';
 import { Limits, View } from './view.js';
-import { LOCALE, say } from './words.js';
+import { say } from './words.js';
 
 /** @param {string} id */
 const at = (id) => /** @type {HTMLElement} */ (document.getElementById(id));
 
 export class Frame {
-  /** @param {Atlas} atlas @param {Status} status */
-  constructor(atlas, status) {
+  /** @param {Atlas} atlas @param {Neighbours} neighbours @param {Status} status */
+  constructor(atlas, neighbours, status) {
     this.atlas = atlas;
+    this.neighbours = neighbours;
     this.status = status;
     this.hand = at('hand');
     this.frameAsked = 0;
@@ -85,12 +91,14 @@ export class Frame {
       objects: (list) => this.markers.setList(list),
       census: (counts) => this.census.setCounts(counts),
     });
-    this.sheets = words(say('sheets'), (sheetName) => this.state.set({ sheetName }));
-    this.sheets.root.classList.add('column');
-    at('sheets').append(this.sheets.root);
+    this.sheets = new Sheets(at('sheets'), this.state, neighbours);
+    this.divider = new Divider(at('map'), this.state, neighbours);
     this.looks = new Looks();
+    neighbours.look().then(() => this.stateChanged(new Set()));
     this.linking = new Linking(this);
-    this.title();
+    this.title = new Title(at('title'), this.state);
+    const keys = make('button.word.act.keys', { type: 'button', click: () => this.showKeys() }, say('keys'));
+    at('links').replaceChildren(this.tapeWord, this.linking.word, keys, ...this.looks.words);
     listen(this.hand, () => this.motion, {
       press: (x, y, touch) => this.tape.press(x, y, touch),
       tap: (x, y, touch) => this.tapped(x, y, touch),
@@ -107,33 +115,11 @@ export class Frame {
     this.stateChanged(new Set(['sheetName']));
   }
 
-  title() {
-    const { atlas, state } = this;
-    document.title = atlas.title || say('untitled');
-    document.documentElement.lang = LOCALE;
-    const { redshift, age_gyr: age } = state.epoch;
-    const facts = [];
-    if (redshift !== null && redshift !== undefined && atlas.view.coordinates === 'comoving') facts.push(say('epoch', { z: fixed(redshift, 2) }));
-    if (age) facts.push(say('age', { age: fixed(age, 1) }));
-    at('title').replaceChildren(make('h1', {}, make('a', { href: '../', title: atlas.json.about ?? '' }, atlas.title || say('untitled'))), make('div.dim', {}, facts.join(' · ')));
-    if (atlas.epochs.length > 1) at('title').append(this.epochs(atlas.epochs));
-    const keys = make('button.word.act.keys', { type: 'button', click: () => this.showKeys() }, say('keys'));
-    at('links').replaceChildren(this.tapeWord, this.linking.word, keys, ...this.looks.words);
-  }
-
-  /** A word for each epoch, to step through in place. @param {import('./atlas.js').Epoch[]} list */
-  epochs(list) {
-    const row = words(say('epochs'), (name) => this.state.set({ epoch: list.find((e) => e.name === name) }));
-    row.update(list.map(({ name }) => ({ value: name, text: name })), this.state.epoch.name);
-    return row.root;
-  }
-
   // What is shown ------------------------------------------------------------------------------------------------
 
-  /** @returns {Layer} the layer that the state asks for */
-  get layer() {
-    const { state, atlas } = this;
-    const layer = new Layer(atlas, state.epoch, state.sheet, state.slabs);
+  /** The layer of a side. @param {import('./side.js').Side} side */
+  layerOf(side) {
+    const layer = new Layer(side.atlas, side.epoch, sheetOf(side), this.state.slabsFor(side.atlas), mateOf(side), side.how);
     const known = this.layers.get(layer.id) ?? layer;
     this.layers.set(layer.id, known);
     return known;
@@ -143,9 +129,11 @@ export class Frame {
   stateChanged(changed) {
     if (!this.motion || !this.sheets) return;
     const { state } = this;
-    this.map.show(this.layer, state.tone);
-    this.sheets.update(state.epoch.sheets.map((s, i) => ({ value: s.name, text: s.title || s.name, title: say('sheet_key', { n: i + 1 }) })), state.sheet.name);
-    if (changed.has('epoch')) this.title();
+    this.map.show(state.sides.map((side) => ({ layer: this.layerOf(side), paint: state.paintOf(side) })), state.divide, state.held);
+    this.sheets.draw();
+    this.divider.draw();
+    if (['sides', 'held', 'atlas', 'epoch'].some((key) => changed.has(key))) this.sideChanged();
+    this.askCounts(80);
     if (changed.has('object')) this.seekObject();
     this.tape.follow();
     if (changed.has('tape')) this.tapeNote.back = false;
@@ -159,6 +147,14 @@ export class Frame {
     this.catalogue.ask(this.motion.view, 150);
     this.linking?.soon();
     this.wake();
+  }
+
+  /** Another epoch or atlas may be in hand, with other epochs and objects. */
+  sideChanged() {
+    this.title.draw();
+    if (this.state.epoch.catalogue) return;
+    this.markers.setList([]);
+    this.census.setCounts(NONE);
   }
 
   moved() {
@@ -237,9 +233,11 @@ export class Frame {
         const parts = this.map.parts(this.motion.view);
         const pixels = parts.reduce((sum, p) => sum + (p.x1 - p.x0) * (p.y1 - p.y0), 0);
         const stride = Math.max(Math.round(Math.sqrt(pixels / 4e5)), 1);
-        const how = this.tone.binning(front.layer.coding);
-        const { counts } = await this.tiles.count(parts, { stride, ...how });
-        this.tone.setCounts(counts, how, front.layer.coding);
+        const second = this.state.second && front.layer.mate;
+        const { coding } = second || front.layer;
+        const how = this.tone.binning(coding);
+        const { counts } = await this.tiles.count(parts, { stride, ...how, part: second ? 1 : 0 });
+        this.tone.setCounts(counts, how, coding);
       }
       this.timers.counts = 0;
     }, every);
@@ -261,6 +259,7 @@ export class Frame {
     for (const sheet of [this.map.canvas, this.markers.canvas, this.hand]) Object.assign(sheet.style, { width: `${w}px`, height: `${h}px` });
     const { view } = this.motion;
     this.motion.view = this.motion.limits.clamp(view.resized(w, h));
+    this.divider?.draw();
     this.moved();
     this.draw(performance.now());
   }
@@ -273,7 +272,7 @@ export class Frame {
     if (this.tape.near(x, y, touch)) {
       this.tapeNote.back = false;
       this.tapeNote.show(this.state.tape);
-    }
+    } else if (this.state.divided) this.state.hold(x < this.state.divide * this.motion.view.w ? 0 : 1);
     if (touch) {
       this.reading.hover(null, null);
       this.reading.place = this.motion.view.invert(x, y);
@@ -388,7 +387,10 @@ async function start(status, delay = 500) {
     setTimeout(() => start(status, Math.min(delay * 2, 15000)), delay);
     return;
   }
-  new Frame(atlas, status);
+  const neighbours = new Neighbours(atlas);
+  const other = read(location.hash).view['beside.atlas'];
+  if (other) await neighbours.open(other);
+  new Frame(atlas, neighbours, status);
   status.clear('start');
   if (sessionStorage.getItem('tilemap-rebuilt')) status.say(say('trouble_rebuilt'));
   sessionStorage.removeItem('tilemap-rebuilt');

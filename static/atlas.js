@@ -12,9 +12,12 @@ import { windowCoding } from './coding.js';
 /** @typedef {import('./coding.js').Coding} Coding */
 /** @typedef {[number, number]} Slabs from the first slab up to, not including, the last */
 
+/** @typedef {''|'hue'|'above'} How the second sheet is shown with the first: not at all, as its hue, as light laid over it */
+
 /**
- * What a worker needs to make one tile of a layer.
+ * What a worker needs to make one tile of a sheet.
  * @typedef {object} Recipe
+ * @property {string} key of the tile, whatever it is shown with
  * @property {string[]} tiles addresses, one for each slab
  * @property {string[]|null} weights addresses of the weights, where a mean or a dispersion is taken over several slabs
  * @property {string[]|null} means addresses of the means that a dispersion is about
@@ -26,11 +29,16 @@ import { windowCoding } from './coding.js';
  */
 
 export class Atlas {
-  /** @param {any} json the content of atlas.json */
-  constructor(json) {
+  /**
+   * @param {any} json the content of atlas.json @param {string} [base] address of the atlas, relative to the document
+   * @param {string} [name] by which a link to another atlas names it
+   */
+  constructor(json, base = '', name = '') {
     if (json?.format !== 'tilemap-atlas') throw new TypeError(`expected format tilemap-atlas, got ${json?.format}`);
     if (json.version !== 1) throw new TypeError(`expected version 1, got ${json.version}`);
     this.json = json;
+    this.base = base;
+    this.name = name;
     /** @type {string} */ this.id = json.id;
     /** @type {string} */ this.title = json.title ?? '';
     /** @type {number} */ this.tile = json.tile;
@@ -44,11 +52,11 @@ export class Atlas {
     this.pixel = (json.view.u[1] - json.view.u[0]) / this.columns;
   }
 
-  /** Reads atlas.json beside the document. */
-  static async open() {
-    const answer = await fetch('atlas.json', { cache: 'no-cache' });
+  /** Reads atlas.json beside the document, or at another address. @param {string} [base] @param {string} [name] */
+  static async open(base = '', name = '') {
+    const answer = await fetch(`${base}atlas.json`, { cache: 'no-cache' });
     if (!answer.ok) throw new Error(`${answer.status} ${answer.statusText}`.trim());
-    return new Atlas(await answer.json());
+    return new Atlas(await answer.json(), base, name);
   }
 
   /** @returns {import('./view.js').Bounds} */
@@ -59,6 +67,11 @@ export class Atlas {
 
   get slabs() {
     return this.edges.length - 1;
+  }
+
+  /** @param {Slabs} slabs */
+  wholeDepth([first, end]) {
+    return first === 0 && end === this.slabs;
   }
 
   /** @param {number} level */
@@ -123,10 +136,10 @@ export class Atlas {
   }
 }
 
-/** One sheet of one epoch through one depth window: what the map shows at a time. */
+/** One sheet of one epoch through one depth window, or two together: what a side of the map shows at a time. */
 export class Layer {
-  /** @param {Atlas} atlas @param {Epoch} epoch @param {Sheet} sheet @param {Slabs} slabs */
-  constructor(atlas, epoch, sheet, slabs) {
+  /** @param {Atlas} atlas @param {Epoch} epoch @param {Sheet} sheet @param {Slabs} slabs @param {Sheet} [mate] @param {How} [how] */
+  constructor(atlas, epoch, sheet, slabs, mate, how = '') {
     this.atlas = atlas;
     this.epoch = epoch;
     this.sheet = sheet;
@@ -134,7 +147,10 @@ export class Layer {
     this.weight = sheet.weight ? atlas.sheet(epoch, sheet.weight) : undefined;
     this.mean = sheet.mean ? atlas.sheet(epoch, sheet.mean) : undefined;
     this.id = `${atlas.id}/${epoch.name}/${sheet.name}/${slabs[0]}-${slabs[1]}`;
-    const whole = slabs[0] === 0 && slabs[1] === atlas.slabs && atlas.slabs > 1;
+    /** @type {Layer|null} the second sheet */
+    this.mate = mate && how ? new Layer(atlas, epoch, mate, slabs) : null;
+    if (mate && how) this.id += `/${how}/${mate.name}`;
+    const whole = atlas.wholeDepth(slabs) && atlas.slabs > 1;
     /** @type {(string|number)[]} */
     this.names = whole ? ['whole'] : Array.from({ length: slabs[1] - slabs[0] }, (_, i) => slabs[0] + i);
     /** @type {Coding} */
@@ -146,17 +162,18 @@ export class Layer {
     return `${this.id}/${level}/${row}/${column}`;
   }
 
-  /** @param {number} level @param {number} row @param {number} column @returns {Recipe} */
-  recipe(level, row, column) {
-    const { atlas, epoch, sheet } = this;
+  /** One recipe for each sheet. @param {number} level @param {number} row @param {number} column @returns {Recipe[]} */
+  recipes(level, row, column) {
+    const { atlas, epoch, sheet, mate, slabs } = this;
     const address = (/** @type {string} */ name, /** @type {string|number} */ slab) =>
-      `tiles/${[atlas.id, epoch.name, name, level, slab, row, column].map(encodeURIComponent).join('/')}`;
+      `${atlas.base}tiles/${[atlas.id, epoch.name, name, level, slab, row, column].map(encodeURIComponent).join('/')}`;
     const tiles = (/** @type {Sheet} */ from) => this.names.map((slab) => address(from.name, slab));
     const coding = (/** @type {Sheet} */ { coding, low, step }) => ({ coding, low, step });
     const several = this.names.length > 1;
     const weight = several ? this.weight : undefined;
     const mean = several ? this.mean : undefined;
-    return {
+    const recipe = {
+      key: [atlas.id, epoch.name, sheet.name, ...slabs, level, row, column].join('/'),
       tiles: tiles(sheet),
       weights: weight ? tiles(weight) : null,
       means: mean ? tiles(mean) : null,
@@ -166,6 +183,7 @@ export class Layer {
       meanCoding: mean ? coding(mean) : null,
       shown: this.coding,
     };
+    return [recipe, ...(mate?.recipes(level, row, column) ?? [])];
   }
 }
 

@@ -10,7 +10,7 @@ import { say } from './words.js';
 /** @typedef {{column: string, unit: string, edges: number[], in_view: number[], whole: number[], log: boolean}} Counts */
 
 /** Before the first answer, and without a catalogue. @type {Counts} */
-const NONE = { column: '', unit: '', edges: [], in_view: [], whole: [], log: false };
+export const NONE = { column: '', unit: '', edges: [], in_view: [], whole: [], log: false };
 
 export class CensusEdge {
   /** @param {HTMLElement} root @param {HTMLElement} corner @param {import('./state.js').State} state */

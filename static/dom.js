@@ -72,3 +72,22 @@ export function words(label, choose) {
     },
   };
 }
+
+/**
+ * A word that opens to a list of others, one of which takes its place.
+ * @param {string} label @param {(value: string) => void} choose
+ */
+export function pick(label, choose) {
+  const root = /** @type {HTMLSelectElement} */ (make('select.word.pick', { 'aria-label': label, change: () => choose(root.value) }));
+  let shown = '';
+  return {
+    root,
+    /** @param {{value: string, text: string}[]} list @param {string} chosen */
+    update(list, chosen) {
+      const key = JSON.stringify(list);
+      if (key !== shown) root.replaceChildren(...list.map(({ value, text }) => make('option', { value }, text)));
+      shown = key;
+      root.value = chosen;
+    },
+  };
+}

@@ -30,10 +30,11 @@ export class PixelGrid {
     const { atlas } = layer;
     const [columns, rows] = atlas.size(0);
     const clip = (/** @type {number} */ x, /** @type {number} */ top) => Math.min(Math.max(x, 0), top);
-    const x0 = clip(Math.floor((view.bounds.u0 - atlas.view.u[0]) / atlas.pixel), columns);
-    const x1 = clip(Math.ceil((view.bounds.u1 - atlas.view.u[0]) / atlas.pixel), columns);
-    const y0 = clip(Math.floor((atlas.view.v[1] - view.bounds.v1) / atlas.pixel), rows);
-    const y1 = clip(Math.ceil((atlas.view.v[1] - view.bounds.v0) / atlas.pixel), rows);
+    const bounds = this.map.pane.bounds(view);
+    const x0 = clip(Math.floor((bounds.u0 - atlas.view.u[0]) / atlas.pixel), columns);
+    const x1 = clip(Math.ceil((bounds.u1 - atlas.view.u[0]) / atlas.pixel), columns);
+    const y0 = clip(Math.floor((atlas.view.v[1] - bounds.v1) / atlas.pixel), rows);
+    const y1 = clip(Math.ceil((atlas.view.v[1] - bounds.v0) / atlas.pixel), rows);
     const [left, top] = view.apply(atlas.view.u[0], atlas.view.v[1]);
     context.strokeStyle = `rgb(0 0 0 / ${Math.min((side - LINES) / LINES, 1) * 0.35})`;
     context.lineWidth = 1;
@@ -54,7 +55,7 @@ export class PixelGrid {
     const size = side < ONE_LINE ? Math.max(side / 4.4, 8.5) : side / 6.2;
     context.font = `${size.toFixed(1)}px system-ui, sans-serif`;
     context.globalAlpha = Math.min((side - LINES) / 8 + 0.2, 1);
-    const tone = front.painted;
+    const [tone] = front.painted.tones;
     const colours = ramp(tone.ramp);
     const times = say('times');
     const tight = times.trim();

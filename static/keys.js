@@ -2,6 +2,7 @@
 // takes text. Out: calls on the frame.
 
 import { make } from './dom.js';
+import { HOWS } from './side.js';
 import { keyList, say } from './words.js';
 
 /** @param {import('./app.js').Frame} frame */
@@ -14,6 +15,10 @@ export function keyboard(frame) {
     frame.glide(du * side, dv * side);
   };
   const zoom = (/** @type {number} */ factor) => frame.motion.zoomBy(frame.motion.view.w / 2, frame.motion.view.h / 2, factor);
+  const step = (/** @type {number} */ by) => {
+    const { epochs } = state.atlas;
+    state.set({ epoch: epochs[(epochs.indexOf(state.epoch) + by + epochs.length) % epochs.length] });
+  };
   /** @type {Record<string, (event: KeyboardEvent) => void>} */
   const does = {
     ArrowLeft: (e) => travel(e, 1, 0),
@@ -25,6 +30,12 @@ export function keyboard(frame) {
     '-': () => zoom(1 / 1.5),
     _: () => zoom(1 / 1.5),
     0: () => frame.motion.fly(frame.motion.limits.whole(frame.motion.view)),
+    b: () => state.set({ how: HOWS[(HOWS.indexOf(state.how) + 1) % HOWS.length] }),
+    o: () => state.mate && state.set({ second: !state.second }),
+    v: () => state.turnDivider(),
+    s: () => state.hold(1 - state.held),
+    e: () => step(1),
+    E: () => step(-1),
     a: () => frame.tone.auto(),
     A: () => frame.tone.reset(),
     l: () => frame.tone.next('curve'),

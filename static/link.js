@@ -1,39 +1,42 @@
 // A view written as a link and read back: the part after # in the address, in physical units, so that a person can read
 // and edit it. #u=31.2&v=8.4&width=2.5&sheet=gas&depth=25:50&tone=1e5:3e8. What is as usual is left out.
+// Words about one of several carry its name: tone.stars=1e3:1e8, beside.epoch=z2.00.
 
+/** @typedef {'epoch'|'sheet'|'hue'|'above'|'curve'|'ramp'|'hues'|'toned'|'beside'|'hand'|'object'|'lengths'|'markers'} Named */
 /**
- * @typedef {object} Linked
- * @property {number} [u] @property {number} [v] @property {number} [width] atlas unit
- * @property {string} [epoch] @property {string} [sheet]
- * @property {[number, number]} [depth] atlas unit
- * @property {[number, number]} [tone] sheet unit
- * @property {string} [curve] @property {string} [ramp]
- * @property {[number, number]} [census] unit of the ranked column
- * @property {string} [object] @property {string} [lengths] @property {string} [markers]
- * @property {[number, number][]} [line] @property {[number, number][]} [outline] atlas unit
+ * Lengths in the atlas unit, tones in their sheet's, the census in that of its column; `divide` is a part of the width.
+ * @typedef {{u?: number, v?: number, width?: number, divide?: number, depth?: [number, number], tone?: [number, number], census?: [number, number]}
+ *   & {line?: [number, number][], outline?: [number, number][]} & Partial<Record<Named|`beside.${'atlas'|'epoch'|'hue'|'above'}`, string>>} Linked
  */
 
-const NUMBERS = ['u', 'v', 'width'];
+const NUMBERS = ['u', 'v', 'width', 'divide'];
 const PAIRS = ['depth', 'tone', 'census'];
 const PATHS = ['line', 'outline'];
-const NAMES = ['epoch', 'sheet', 'curve', 'ramp', 'object', 'lengths', 'markers'];
-const ORDER = ['u', 'v', 'width', 'epoch', 'sheet', 'depth', 'tone', 'curve', 'ramp', 'census', 'object', 'lengths', 'markers', 'line', 'outline'];
+const NAMES = ['epoch', 'sheet', 'hue', 'above', 'curve', 'ramp', 'hues', 'toned', 'beside', 'hand', 'object', 'lengths', 'markers'];
+const ORDER = ['u', 'v', 'width', 'epoch', 'sheet', 'hue', 'above', 'depth', 'tone', 'curve', 'ramp', 'hues', 'toned', 'divide', 'beside', 'hand', 'census', 'object', 'lengths', 'markers', 'line', 'outline'];
+const NAMED = ['tone', 'curve', 'ramp', 'hues', 'beside'];
 /** Places in a line or an outline, at most: as many as the server takes. */
 const MOST_PLACES = 1000;
+
+/** The word that a key begins with, before the name of what it is about. @param {string} key */
+function word(key) {
+  const dot = key.indexOf('.');
+  return dot < 0 ? key : NAMED.includes(key.slice(0, dot)) ? key.slice(0, dot) : '';
+}
 
 /**
  * @param {Linked} view
  * @returns {string} beginning with #
  */
 export function write(view) {
-  /** @type {Record<string, any>} */ const all = view;
   const parts = [];
-  for (const key of ORDER) {
-    const value = all[key];
+  const place = (/** @type {[string, any]} */ [key]) => ORDER.indexOf(word(key));
+  /** @type {[string, any][]} */ const entries = Object.entries(view);
+  for (const [key, value] of entries.sort((a, b) => place(a) - place(b))) {
     if (value === undefined || value === null) continue;
     const pair = (/** @type {number[]} */ numbers) => numbers.map(short).join(':');
     const text = PATHS.includes(key) ? value.map(pair).join(',') : Array.isArray(value) ? pair(value) : typeof value === 'number' ? short(value) : escape(value);
-    parts.push(`${key}=${text}`);
+    parts.push(`${escape(key)}=${text}`);
   }
   return `#${parts.join('&')}`;
 }
@@ -50,23 +53,24 @@ export function read(fragment) {
   for (const part of fragment.replace(/^#/, '').split('&')) {
     if (!part) continue;
     const cut = part.indexOf('=');
-    const key = part.slice(0, cut);
+    const key = unescape(part.slice(0, cut));
+    const kind = word(key);
     const text = unescape(part.slice(cut + 1));
-    if (NUMBERS.includes(key)) {
+    if (NUMBERS.includes(kind)) {
       const x = real(text);
-      if (x === null || (key === 'width' && x <= 0)) bad.push(part);
+      if (x === null || (key === 'width' && x <= 0) || (key === 'divide' && (x < 0 || x > 1))) bad.push(part);
       else view[key] = x;
-    } else if (PAIRS.includes(key)) {
+    } else if (PAIRS.includes(kind)) {
       const pair = text.split(':').map(real);
       if (pair.length !== 2 || pair[0] === null || pair[1] === null || pair[0] >= pair[1]) bad.push(part);
       else view[key] = /** @type {[number, number]} */ (pair);
-    } else if (PATHS.includes(key)) {
+    } else if (PATHS.includes(kind)) {
       const places = text.split(',').map((place) => place.split(':').map(real));
       const whole = places.every((place) => place.length === 2 && !place.includes(null));
-      const least = key === 'outline' ? 3 : 2;
+      const least = kind === 'outline' ? 3 : 2;
       if (!whole || places.length < least || places.length > MOST_PLACES) bad.push(part);
       else view[key] = places;
-    } else if (NAMES.includes(key) && text) view[key] = text;
+    } else if (NAMES.includes(kind) && text) view[key] = text;
     else bad.push(part);
   }
   // A long one is told by its beginning.

@@ -42,15 +42,17 @@ export class Linking {
   }
 
   /** Goes where the address says. @param {boolean} fly */
-  follow(fly) {
-    const { motion, state, status } = this.frame;
+  async follow(fly) {
+    const { motion, neighbours, state, status } = this.frame;
     const { view: link, bad } = read(location.hash);
+    const other = link['beside.atlas'];
+    if (other && !neighbours.opened.has(other)) await neighbours.open(other);
     // A link means the same wherever one was before: what it leaves out comes from the first view. The place comes first,
     // so that no tile of the sheet is asked for at the old one.
     const goal = motion.limits.filled(motion.view).with(link);
     if (fly) motion.fly(goal);
     else motion.jump(goal);
-    const trouble = state.fromLink(link);
+    const trouble = state.fromLink(link, (name) => neighbours.opened.get(name));
     if (bad.length) trouble.push(['trouble_link', { part: bad[0] }]);
     for (const [key, fill] of trouble) status.say(say(key, fill), { stay: 9000 });
   }

@@ -4,8 +4,12 @@
 import { CODES, decode } from './coding.js';
 import { GROUND, ramp, STEPS } from './ramps.js';
 
-/** @typedef {{lo: number, hi: number, curve: string, ramp: string}} Tone dark and bright ends in the sheet's unit */
+/** @typedef {{lo: number, hi: number, curve: string, ramp: string, hues: string}} Tone ends in the sheet's unit; hues where it gives the hue */
 /** @typedef {import('./coding.js').Coding} Coding */
+/**
+ * Colours by code; with two sheets table[rows[first] + columns[second]].
+ * @typedef {{table: Uint32Array, rows: Uint32Array|null, columns: Uint16Array|null}} Palette
+ */
 
 /** The curves that a coding can carry; signed values have no logarithm. @param {Coding} c @returns {('log'|'asinh'|'linear')[]} */
 export function curves(c) {
@@ -32,27 +36,35 @@ export function step(t) {
 }
 
 /**
- * One colour for each code, as the bytes R, G, B, A of a canvas read as a little-endian number.
+ * The row of the ramp for each code; 0 also for nothing.
  * @param {Tone} tone @param {Coding} c
- * @returns {Uint32Array} length 65536
+ * @returns {Uint16Array} length 65536
  */
-export function lut(tone, c) {
-  const colours = new Uint32Array(STEPS);
-  const rgb = ramp(tone.ramp);
-  for (let i = 0; i < STEPS; i++) colours[i] = pack(rgb[3 * i], rgb[3 * i + 1], rgb[3 * i + 2]);
-  const table = new Uint32Array(CODES);
-  table[0] = pack(...GROUND);
+export function steps(tone, c) {
+  const table = new Uint16Array(CODES);
   const straight = tone.curve === 'log' && c.coding === 'log';
   const low = Math.log10(tone.lo);
   const span = Math.log10(tone.hi) - low;
   for (let code = 1; code < CODES; code++) {
-    const t = straight ? (c.low + c.step * (code - 1) - low) / span : shade(decode(code, c), tone);
-    table[code] = colours[step(t)];
+    table[code] = step(straight ? (c.low + c.step * (code - 1) - low) / span : shade(decode(code, c), tone));
   }
   return table;
 }
 
-/** @param {number} r @param {number} g @param {number} b */
-function pack(r, g, b) {
+/**
+ * One colour for each code.
+ * @param {Tone} tone @param {Coding} c
+ * @returns {Palette}
+ */
+export function lut(tone, c) {
+  const rgb = ramp(tone.ramp);
+  const colours = Uint32Array.from({ length: STEPS }, (_, i) => pack(rgb[3 * i], rgb[3 * i + 1], rgb[3 * i + 2]));
+  const table = Uint32Array.from(steps(tone, c), (i) => colours[i]);
+  table[0] = pack(...GROUND);
+  return { table, rows: null, columns: null };
+}
+
+/** The bytes R, G, B, A of a canvas as a little-endian number. @param {number} r @param {number} g @param {number} b */
+export function pack(r, g, b) {
   return (0xff000000 | (b << 16) | (g << 8) | r) >>> 0;
 }

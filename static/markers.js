@@ -120,8 +120,10 @@ export class Markers {
     const kept = [];
     const { chosen } = this;
     const order = chosen ? [chosen, ...this.list.filter((o) => Markers.name(o) !== Markers.name(chosen))] : this.list;
+    const [from, to] = this.state.ownPart.map((x) => x * view.w);
     for (const found of order) {
       const [x, y] = view.apply(found.u, found.v);
+      if (x < from || x > to) continue;
       const r = Math.max((found.size ?? 0) * view.scale, LEAST);
       if (x < -r || y < -r || x > view.w + r || y > view.h + r) continue;
       const near = (/** @type {Ring} */ o) => Math.hypot(o.x - x, o.y - y) < Math.max(APART, Math.min(o.r + r + 6, APART_MOST));

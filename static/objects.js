@@ -53,8 +53,8 @@ export class Catalogue {
     if (epoch.catalogue?.rank) Object.assign(count, { column: epoch.catalogue.rank });
     try {
       const [found, counts] = await Promise.all([
-        question('objects', { ...wide, ...filter }, control.signal),
-        question('census', count, control.signal),
+        question(`${atlas.base}objects`, { ...wide, ...filter }, control.signal),
+        question(`${atlas.base}census`, count, control.signal),
       ]);
       if (control.signal.aborted) return;
       this.last = key;
@@ -71,7 +71,7 @@ export class Catalogue {
 
   /** An object by its name, among all of a rectangle. @param {import('./view.js').Bounds} bounds @param {(found: Found) => boolean} wanted */
   async find({ u0, u1, v0, v1 }, wanted) {
-    const answer = await question('objects', { u0, u1, v0, v1, limit: 5000, epoch: this.state.epoch.name });
+    const answer = await question(`${this.state.atlas.base}objects`, { u0, u1, v0, v1, limit: 5000, epoch: this.state.epoch.name });
     return answer.objects.find(wanted);
   }
 }

@@ -100,6 +100,16 @@ export function ramp(name) {
 /** The colour of code 0 and of the room around the volume, sRGB bytes. */
 export const GROUND = /** @type {[number, number, number]} */ ([...ramp('shingle').subarray(0, 3)]);
 
+/** @type {Map<string, Float64Array>} */
+const lightnesses = new Map();
+
+/** OKLab lightness along a ramp. @param {string} name @returns {Float64Array} length STEPS */
+export function lightness(name) {
+  const known = lightnesses.get(name) ?? Float64Array.from({ length: STEPS }, (_, i) => lab(STOPS[name], i / (STEPS - 1))[0]);
+  lightnesses.set(name, known);
+  return known;
+}
+
 /** A CSS gradient of the ramp, dark end first. @param {string} name @param {string} direction */
 export function gradient(name, direction) {
   const table = ramp(name);
@@ -145,21 +155,30 @@ export function lab(stops, t) {
  * OKLab to sRGB bytes; a colour outside the gamut loses chroma, never lightness.
  * @param {[number, number, number]} lab
  */
-function toSrgb([l, a, b]) {
+export function toSrgb([l, a, b]) {
   let keep = 1;
   let rgb = linear(l, a, b);
   while (keep > 0 && rgb.some((x) => x < -1e-4 || x > 1 + 1e-4)) {
     keep -= 0.02;
     rgb = linear(l, a * keep, b * keep);
   }
-  return rgb.map((x) => {
-    const y = Math.min(Math.max(x, 0), 1);
-    return 255 * (y <= 0.0031308 ? 12.92 * y : 1.055 * y ** (1 / 2.4) - 0.055);
-  });
+  return rgb.map(encoded);
+}
+
+/** Linear light to an sRGB byte (IEC 61966-2-1), not rounded. @param {number} x */
+export function encoded(x) {
+  const y = Math.min(Math.max(x, 0), 1);
+  return 255 * (y <= 0.0031308 ? 12.92 * y : 1.055 * y ** (1 / 2.4) - 0.055);
+}
+
+/** An sRGB byte to linear light. @param {number} byte */
+export function light(byte) {
+  const y = byte / 255;
+  return y <= 0.04045 ? y / 12.92 : ((y + 0.055) / 1.055) ** 2.4;
 }
 
 /** OKLab to linear sRGB, the matrices of Ottosson (2020). @param {number} L @param {number} a @param {number} b */
-function linear(L, a, b) {
+export function linear(L, a, b) {
   const l = (L + 0.3963377774 * a + 0.2158037573 * b) ** 3;
   const m = (L - 0.1055613458 * a - 0.0638541728 * b) ** 3;
   const s = (L - 0.0894841775 * a - 1.291485548 * b) ** 3;

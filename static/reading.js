@@ -21,6 +21,7 @@ export class Reading {
     root.append(this.value, this.where);
     this.asked = 0;
     this.text = '';
+    this.shown = '';
   }
 
   /** @param {number|null} x @param {number|null} y */
@@ -34,8 +35,10 @@ export class Reading {
     const { u0, u1, v0, v1 } = view.bounds;
     if (this.place && (this.place[0] < u0 || this.place[0] > u1 || this.place[1] < v0 || this.place[1] > v1)) this.place = null;
     const [u, v] = this.cursor ? view.invert(...this.cursor) : (this.place ?? [view.u, view.v]);
-    const { atlas } = this.state;
-    const sheet = this.map.front?.layer.sheet ?? this.state.sheet;
+    const pane = this.map.paneAt(view, u);
+    const layer = pane.front?.layer;
+    const atlas = layer?.atlas ?? this.state.atlas;
+    const parts = layer?.mate ? [layer, layer.mate] : layer ? [layer] : [];
     const measure = this.does.measure();
     const { factor, name } = coordinates(atlas.bounds, measure);
     const places = decimals(Math.max(1 / view.scale, atlas.pixel / 10) * factor);
@@ -44,23 +47,30 @@ export class Reading {
     this.where.replaceChildren(...[[a, x], [b, y]].map((parts) => make('div', {}, `${parts.join(' ')} ${name}`)));
     const where = `${a} = ${x}, ${b} = ${y} ${name}${measure.name === 'proper' || measure.name === 'angle' ? ` (${say(measure.name)})` : ''}`;
     const ask = ++this.asked;
-    const at = this.map.pixelAt(view, u, v);
-    const found = at ? await this.map.tiles.read(at.key, at.column, at.row) : null;
+    const at = pane.pixelAt(view, u, v);
+    const found = await Promise.all(parts.map((_, part) => (at ? this.map.tiles.read(at.key, at.column, at.row, 1, 1, part) : null)));
     if (ask !== this.asked) return;
-    const value = found ? found[0] : null;
-    if (!at) this.show(say('reading_outside'));
-    else if (value === null) this.show(say('reading_wait'));
-    else if (Number.isNaN(value)) this.show(say('reading_none'));
-    else this.show(number(value), unit(sheet.unit));
-    const exact = value === null || Number.isNaN(value) ? '' : `${Number(value.toPrecision(7))} ${sheet.unit}`;
-    this.text = say('reading_copy', { value: exact, where, sheet: sheet.title || sheet.name, level: at?.level ?? '–' }).trim();
-    this.value.dataset.value = value === null || Number.isNaN(value) ? '' : String(value);
-    this.does.tell(value);
+    const values = found.map((block) => (block ? block[0] : null));
+    this.show(at ? values.map((value, i) => lineOf(value, parts[i].sheet)) : [[say('reading_outside'), '']]);
+    const exact = values.map((value, i) => (value === null || Number.isNaN(value) ? '' : `${Number(value.toPrecision(7))} ${parts[i].sheet.unit}`));
+    const titles = parts.map(({ sheet }) => sheet.title || sheet.name);
+    this.text = say('reading_copy', { value: exact.filter(Boolean).join(', '), where, sheet: titles.join(', '), level: at?.level ?? '–' }).trim();
+    this.value.dataset.value = values.map((value) => (value === null || Number.isNaN(value) ? '' : String(value))).join(' ').trim();
+    this.does.tell(pane === this.map.pane ? (values[this.state.second ? 1 : 0] ?? null) : null);
   }
 
-  /** @param {string} text @param {string} [of] the unit */
-  show(text, of = '') {
-    if (this.value.textContent === `${text} ${of}`) return;
-    this.value.replaceChildren(`${text} `, make('span', {}, of));
+  /** @param {string[][]} lines text and unit of each */
+  show(lines) {
+    const key = JSON.stringify(lines);
+    if (this.shown === key) return;
+    this.shown = key;
+    this.value.classList.toggle('two', lines.length > 1);
+    this.value.replaceChildren(...lines.map(([text, of]) => make('div', {}, `${text} `, make('span', {}, of))));
   }
+}
+
+/** @param {number|null} value @param {import('./atlas.js').Sheet} sheet @returns {string[]} text and unit */
+function lineOf(value, sheet) {
+  if (value === null) return [say('reading_wait'), ''];
+  return Number.isNaN(value) ? [say('reading_none'), ''] : [number(value), unit(sheet.unit)];
 }

@@ -72,9 +72,9 @@ export class TapeNote {
 
   /** @param {Laid} laid */
   ask(laid) {
-    const { epoch, sheet, slabs } = this.state;
+    const { atlas, epoch, sheet, slabs } = this.state;
     const outline = laid.points.map((p) => p.join(':')).join(',');
-    const question = String(new URLSearchParams({ sheet: sheet.name, epoch: epoch.name, slabs: slabs.join(':'), outline }));
+    const question = `${atlas.base}inside?${new URLSearchParams({ sheet: sheet.name, epoch: epoch.name, slabs: slabs.join(':'), outline })}`;
     if (question === this.question) return;
     this.forget();
     this.question = question;
@@ -88,7 +88,7 @@ export class TapeNote {
     const control = new AbortController();
     this.running = control;
     try {
-      const answer = await fetch(`inside?${this.question}`, { signal: control.signal });
+      const answer = await fetch(this.question, { signal: control.signal });
       if (answer.ok) this.inside = await answer.json();
       // A damaged tile stays damaged; a server that answers nothing of the kind never will.
       else if (answer.status === 503) throw new Error('busy');

@@ -1,5 +1,5 @@
-// A worker that fetches tiles, unpacks them, sums the slabs of a depth window, colours them, and keeps their numbers to
-// count and to read. In: messages from tiles.js. Out: bitmaps, counts, values, or the reason why not.
+// A worker that fetches tiles, unpacks them, sums the slabs of a depth window, colours them, one sheet or two together, and
+// keeps their numbers to count and to read. In: messages from tiles.js. Out: bitmaps, counts, values, or the reason why not.
 
 import { decode, encode, valueTable } from './coding.js';
 
@@ -11,15 +11,17 @@ const PATIENCE = 30000;
 /** @typedef {import('./atlas.js').Recipe} Recipe */
 /** @typedef {import('./coding.js').Coding} Coding */
 /**
- * A tile in hand: codes to colour and count, and the exact values where several slabs were combined.
- * @typedef {{codes: Uint16Array|null, values: Float32Array|null, shown: import('./coding.js').Coding}} Held
+ * A tile of one sheet: codes to colour and count, and the exact values where several slabs were combined.
+ * @typedef {{codes: Uint16Array|null, values: Float32Array|null, shown: import('./coding.js').Coding}} Part
  */
 
-/** @type {Map<string, Held>} */
+/** @type {Map<string, {keys: string[], parts: Part[]}>} tiles in hand, of one sheet or two */
 const held = new Map();
+/** @type {Map<string, {part: Part, users: number}>} what they are made of, by recipe: kept once, however it is shown */
+const known = new Map();
 /** @type {Map<string, AbortController>} */
 const running = new Map();
-/** @type {Map<number, Uint32Array>} colours by code, the last few tones */
+/** @type {Map<number, import('./lut.js').Palette>} the last few colours */
 const luts = new Map();
 /** @type {Map<string, Float64Array>} */
 const tables = new Map();
@@ -33,13 +35,13 @@ class Trouble extends Error {
 }
 
 const answers = {
-  /** @param {{id: number, table: Uint32Array}} m */
-  lut({ id, table }) {
-    luts.set(id, table);
-    for (const old of luts.keys()) if (luts.size > 8) luts.delete(old);
+  /** @param {{id: number, palette: import('./lut.js').Palette, used: number[]}} m used: those that are still wanted */
+  lut({ id, palette, used }) {
+    luts.set(id, palette);
+    for (const old of luts.keys()) if (luts.size > 8 && !used.includes(old)) luts.delete(old);
   },
-  /** @param {{key: string, recipe: Recipe, lut: number, fresh: boolean}} m */
-  async load({ key, recipe, lut, fresh }) {
+  /** @param {{key: string, recipes: Recipe[], lut: number, fresh: boolean}} m */
+  async load({ key, recipes, lut, fresh }) {
     const control = new AbortController();
     running.set(key, control);
     let late = false;
@@ -48,11 +50,10 @@ const answers = {
       control.abort();
     }, PATIENCE);
     try {
-      const tile = await make(recipe, control.signal, fresh);
+      const parts = await Promise.all(recipes.map((recipe) => known.get(recipe.key)?.part ?? make(recipe, control.signal, fresh)));
       if (control.signal.aborted) return;
-      held.set(key, tile);
-      const bytes = (tile.codes?.byteLength ?? 0) + (tile.values?.byteLength ?? 0);
-      await paint(key, tile, lut, bytes);
+      const bytes = hold(key, recipes, parts);
+      await paint(key, lut, bytes);
     } catch (error) {
       const reason = error instanceof Trouble ? error.reason : 'server';
       if (late || !control.signal.aborted) postMessage({ type: 'failed', key, reason });
@@ -68,15 +69,14 @@ const answers = {
   },
   /** @param {{key: string, lut: number}} m */
   async paint({ key, lut }) {
-    const tile = held.get(key);
-    if (tile) await paint(key, tile, lut, 0);
+    if (held.has(key)) await paint(key, lut, 0);
   },
   /** @param {{key: string}} m */
   drop({ key }) {
-    held.delete(key);
+    release(key);
   },
-  /** @param {{ask: number, tiles: {key: string, x0: number, x1: number, y0: number, y1: number}[], stride: number, first: number, last: number, bins: number}} m */
-  count({ ask, tiles, stride, first, last, bins }) {
+  /** @param {{ask: number, tiles: {key: string, x0: number, x1: number, y0: number, y1: number}[], stride: number, first: number, last: number, bins: number, part: 0|1}} m */
+  count({ ask, tiles, stride, first, last, bins, part }) {
     const counts = new Uint32Array(bins);
     const bin = new Uint16Array(65536);
     for (let code = 1; code < 65536; code++) {
@@ -84,7 +84,7 @@ const answers = {
     }
     let nothing = 0;
     for (const { key, x0, x1, y0, y1 } of tiles) {
-      const codes = held.get(key)?.codes;
+      const codes = held.get(key)?.parts[part]?.codes;
       if (!codes) continue;
       for (let y = y0; y < y1; y += stride) {
         const row = y * SIDE;
@@ -97,9 +97,9 @@ const answers = {
     }
     postMessage({ type: 'answer', ask, counts, nothing }, { transfer: [counts.buffer] });
   },
-  /** @param {{ask: number, key: string, column: number, row: number, across: number, down: number}} m */
-  read({ ask, key, column, row, across, down }) {
-    const tile = held.get(key);
+  /** @param {{ask: number, key: string, column: number, row: number, across: number, down: number, part: 0|1}} m */
+  read({ ask, key, column, row, across, down, part }) {
+    const tile = held.get(key)?.parts[part];
     const values = new Float64Array(across * down).fill(NaN);
     if (tile?.codes) {
       for (let j = 0; j < down; j++) {
@@ -116,7 +116,32 @@ const answers = {
 
 self.onmessage = ({ data }) => answers[/** @type {keyof typeof answers} */ (data.type)](data);
 
-/** @param {Recipe} recipe @param {AbortSignal} signal @param {boolean} fresh @returns {Promise<Held>} */
+/** @param {string} key @param {Recipe[]} recipes @param {Part[]} parts @returns {number} bytes */
+function hold(key, recipes, parts) {
+  release(key);
+  const keys = recipes.map((recipe) => recipe.key);
+  let bytes = 0;
+  keys.forEach((name, i) => {
+    const use = known.get(name) ?? { part: parts[i], users: 0 };
+    use.users++;
+    parts[i] = use.part;
+    known.set(name, use);
+    bytes += (use.part.codes?.byteLength ?? 0) + (use.part.values?.byteLength ?? 0);
+  });
+  held.set(key, { keys, parts });
+  return bytes;
+}
+
+/** @param {string} key */
+function release(key) {
+  for (const name of held.get(key)?.keys ?? []) {
+    const use = known.get(name);
+    if (use && --use.users === 0) known.delete(name);
+  }
+  held.delete(key);
+}
+
+/** @param {Recipe} recipe @param {AbortSignal} signal @param {boolean} fresh @returns {Promise<Part>} */
 async function make(recipe, signal, fresh) {
   const { kind, coding, weightCoding, meanCoding, shown } = recipe;
   const all = (/** @type {string[]} */ addresses) => Promise.all(addresses.map((address) => bring(address, signal, fresh)));
@@ -152,7 +177,7 @@ async function bring(address, signal, fresh) {
 
 /** Slabs add up as surface densities. Nothing anywhere stays nothing (NaN). @param {(Uint16Array|null)[]} tiles @param {any} coding */
 function sum(tiles, coding) {
-  const table = known(coding);
+  const table = valuesOf(coding);
   const total = new Float64Array(PIXELS);
   const some = new Uint8Array(PIXELS);
   for (const codes of tiles) {
@@ -177,8 +202,8 @@ function highest(tiles) {
 
 /** Means are weighted by their weight sheet. @param {(Uint16Array|null)[]} tiles @param {(Uint16Array|null)[]|null} weights @param {any} coding @param {any} weightCoding */
 function mean(tiles, weights, coding, weightCoding) {
-  const table = known(coding);
-  const heavy = weightCoding ? known(weightCoding) : null;
+  const table = valuesOf(coding);
+  const heavy = weightCoding ? valuesOf(weightCoding) : null;
   const above = new Float64Array(PIXELS);
   const below = new Float64Array(PIXELS);
   tiles.forEach((codes, k) => {
@@ -200,7 +225,7 @@ function mean(tiles, weights, coding, weightCoding) {
  * @param {Coding} coding @param {Coding} meanCoding @param {Coding} weightCoding
  */
 function dispersion(tiles, means, weights, coding, meanCoding, weightCoding) {
-  const [spread, middle, heavy] = [known(coding), known(meanCoding), known(weightCoding)];
+  const [spread, middle, heavy] = [valuesOf(coding), valuesOf(meanCoding), valuesOf(weightCoding)];
   const squares = new Float64Array(PIXELS);
   const above = new Float64Array(PIXELS);
   const below = new Float64Array(PIXELS);
@@ -228,22 +253,28 @@ function recode(values, coding) {
 }
 
 /** @param {import('./coding.js').Coding} coding */
-function known(coding) {
+function valuesOf(coding) {
   const name = JSON.stringify(coding);
   const table = tables.get(name) ?? valueTable(coding);
   tables.set(name, table);
   return table;
 }
 
-/** @param {string} key @param {Held} tile @param {number} lut @param {number} bytes */
-async function paint(key, tile, lut, bytes) {
-  if (!tile.codes) return postMessage({ type: 'painted', key, lut, bitmap: null, bytes });
-  const colours = luts.get(lut);
-  if (!colours) return;
+/** An empty tile, where only the other sheet has something. */
+const NOTHING = new Uint16Array(PIXELS);
+
+/** @param {string} key @param {number} lut @param {number} bytes */
+async function paint(key, lut, bytes) {
+  const parts = held.get(key)?.parts ?? [];
+  if (parts.every(({ codes }) => !codes)) return postMessage({ type: 'painted', key, lut, bitmap: null, bytes });
+  const palette = luts.get(lut);
+  if (!palette) return;
+  const { table, rows, columns } = palette;
   const picture = new ImageData(SIDE, SIDE);
   const out = new Uint32Array(picture.data.buffer);
-  const { codes } = tile;
-  for (let i = 0; i < PIXELS; i++) out[i] = colours[codes[i]];
+  const [first, second] = parts.map(({ codes }) => codes ?? NOTHING);
+  if (rows && columns) for (let i = 0; i < PIXELS; i++) out[i] = table[rows[first[i]] + columns[second[i]]];
+  else for (let i = 0; i < PIXELS; i++) out[i] = table[first[i]];
   const bitmap = await createImageBitmap(picture);
   postMessage({ type: 'painted', key, lut, bitmap, bytes }, { transfer: [bitmap] });
 }

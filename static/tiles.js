@@ -47,10 +47,10 @@ export class Tiles {
     addEventListener('online', () => this.resume());
   }
 
-  /** Makes a tone known to all workers. @param {Uint32Array} table colour by code @returns {number} its id */
-  addLut(table) {
+  /** Makes colours known to all workers. @param {import('./lut.js').Palette} palette @param {number[]} used ids still wanted @returns {number} their id */
+  addLut(palette, used) {
     const id = ++this.luts;
-    for (const worker of this.workers) worker.postMessage({ type: 'lut', id, table });
+    for (const worker of this.workers) worker.postMessage({ type: 'lut', id, palette, used });
     return id;
   }
 
@@ -119,7 +119,7 @@ export class Tiles {
       tile.state = 'loading';
       this.loading++;
       const { key, layer, level, row, column, asked: lut } = tile;
-      tile.worker.postMessage({ type: 'load', key, recipe: layer.recipe(level, row, column), lut, fresh: tile.tries > 0 });
+      tile.worker.postMessage({ type: 'load', key, recipes: layer.recipes(level, row, column), lut, fresh: tile.tries > 0 });
     }
   }
 
@@ -246,20 +246,21 @@ export class Tiles {
 
   /**
    * The values of a rectangle of pixels inside one tile; NaN for nothing.
-   * @param {string} key @param {number} column @param {number} row @param {number} across @param {number} down
+   * @param {string} key @param {number} column @param {number} row @param {number} [across] @param {number} [down]
+   * @param {number} [part] 0 or 1: of the first sheet or of the second
    * @returns {Promise<Float64Array|null>} null while the tile is not there
    */
-  async read(key, column, row, across = 1, down = 1) {
+  async read(key, column, row, across = 1, down = 1, part = 0) {
     const tile = this.get(key);
     if (!tile || tile.state !== 'ready') return null;
-    const { values, known } = await this.ask(tile.worker, { type: 'read', key, column, row, across, down });
+    const { values, known } = await this.ask(tile.worker, { type: 'read', key, column, row, across, down, part });
     return known || !tile.bitmap ? values : null;
   }
 
   /**
    * How often each range of codes occurs in parts of tiles.
    * @param {{key: string, x0: number, x1: number, y0: number, y1: number}[]} parts
-   * @param {{stride: number, first: number, last: number, bins: number}} how
+   * @param {{stride: number, first: number, last: number, bins: number, part: 0|1}} how
    * @returns {Promise<{counts: Float64Array, nothing: number}>}
    */
   async count(parts, how) {

@@ -1,12 +1,14 @@
 // The left edge: how the values in view are distributed, beside the colour ramp that shows them, with a handle for the
 // dark and one for the bright end. In: state and counts of codes in view. Out: a new tone.
 
+import { HUES, hueGradient } from './blend.js';
 import { position } from './coding.js';
-import { make, svg, words } from './dom.js';
+import { dress, make, svg, words } from './dom.js';
 import { handle } from './handle.js';
+import { drawKey } from './key.js';
 import { rounded } from './link.js';
-import { curves, shade, step } from './lut.js';
-import { gradient, ramp, RAMPS } from './ramps.js';
+import { curves } from './lut.js';
+import { gradient, RAMPS } from './ramps.js';
 import { typed } from './typed.js';
 import { decade, number, quantity, unit } from './units.js';
 import { say } from './words.js';
@@ -17,6 +19,7 @@ const BINS = 420;
 export class ToneEdge {
   /** @param {HTMLElement} root @param {import('./state.js').State} state */
   constructor(root, state) {
+    this.root = root;
     this.state = state;
     /** @type {Float64Array|null} */ this.counts = null;
     /** @type {[number, number]} the ends they were counted between, on the axis of the sheet's coding */ this.counted = [0, 1];
@@ -30,6 +33,7 @@ export class ToneEdge {
     /** @type {number|null} the value under the cursor */ this.reading = null;
     root.setAttribute('aria-label', say('tone'));
     this.unit = make('div.unit');
+    this.which = words(say('tone_of'), (second) => state.set({ second: second === 'second' }));
     this.field = make('div.field');
     this.plot = svg('svg', { 'aria-hidden': 'true' });
     this.bars = svg('path', { class: 'bars' });
@@ -41,11 +45,12 @@ export class ToneEdge {
     this.bright = this.end('tone_bright', 'hi');
     this.dark = this.end('tone_dark', 'lo');
     this.curve = words(say('curve'), (curve) => state.setTone({ curve }));
-    this.ramps = words(say('ramps'), (name) => state.setTone({ ramp: name }));
+    this.ramps = words(say('ramps'), (name) => state.setTone(this.hue ? { hues: name } : { ramp: name }));
+    this.across = make('div.across');
     this.ramps.root.classList.add('ramps');
     const act = (/** @type {'tone_auto'|'tone_reset'} */ key, /** @type {() => void} */ action) => make('button.word.act', { type: 'button', title: say(`${key}_title`), click: action }, say(key));
     this.acts = make('div.words', {}, act('tone_auto', () => this.auto()), act('tone_reset', () => this.reset()));
-    root.append(this.unit, this.field, this.acts, this.curve.root, this.ramps.root);
+    root.append(this.unit, this.which.root, this.field, this.across, this.acts, this.curve.root, this.ramps.root);
     this.field.addEventListener('wheel', (event) => this.wheel(event), { passive: false });
     new ResizeObserver(() => this.draw()).observe(this.field);
   }
@@ -80,7 +85,12 @@ export class ToneEdge {
   }
 
   get log() {
-    return this.state.sheet.coding === 'log';
+    return this.state.toned.coding === 'log';
+  }
+
+  /** Whether the sheet in hand gives the hue. */
+  get hue() {
+    return this.state.second && this.state.how === 'hue';
   }
 
   /** Axis coordinate of a value: its logarithm on log sheets. @param {number} value */
@@ -95,7 +105,7 @@ export class ToneEdge {
 
   /** Ends of the axis: the sheet's own range with room above, and always the handles. */
   limits() {
-    const { sheet, tone, atlas, slabs } = this.state;
+    const { toned: sheet, tone, atlas, slabs } = this.state;
     const share = (slabs[1] - slabs[0]) / atlas.slabs;
     const low = sheet.percentiles?.['1'] ?? sheet.range[0];
     const [least, most] = [Math.min(low, sheet.percentiles?.['5'] ?? low), sheet.range[1]];
@@ -145,15 +155,16 @@ export class ToneEdge {
   }
 
   reset() {
-    const { lo, hi } = this.state.usualTone(this.state.sheet);
+    const { lo, hi } = this.state.usualTone(this.state.toned);
     this.state.setTone({ lo, hi });
   }
 
   /** The next curve, or the next ramp. @param {'curve'|'ramp'} which */
   next(which) {
-    const { sheet, tone } = this.state;
-    const list = which === 'curve' ? curves(sheet) : RAMPS;
-    this.state.setTone({ [which]: list[(list.indexOf(tone[which]) + 1) % list.length] });
+    const { toned, tone } = this.state;
+    const key = which === 'ramp' && this.hue ? 'hues' : which;
+    const list = /** @type {string[]} */ ({ curve: curves(toned), ramp: RAMPS, hues: HUES }[key]);
+    this.state.setTone({ [key]: list[(list.indexOf(tone[key]) + 1) % list.length] });
   }
 
   /** Both ends from the values in view: all but the emptiest fifth and the brightest few pixels. */
@@ -199,14 +210,15 @@ export class ToneEdge {
 
   draw() {
     const { state } = this;
-    const { tone, sheet } = state;
-    this.width = this.field.clientWidth;
+    const { tone, toned: sheet } = state;
+    this.describe();
+    this.width = this.plot.getBoundingClientRect().width;
     this.height = this.field.clientHeight;
     if (!this.width || !this.height) return;
     this.limits();
-    this.unit.textContent = unit(sheet.unit);
     this.plot.setAttribute('viewBox', `0 0 ${this.width} ${this.height}`);
-    this.drawStrip(tone);
+    const rows = Math.round(this.height * devicePixelRatio);
+    drawKey(this.strip, rows, state.paintOf(state.side), state.second, (i) => this.value(this.at(((i + 0.5) / rows) * this.height)));
     // Before the ticks, which keep clear of these numbers.
     this.bright.label.textContent = number(tone.hi, 3);
     this.dark.label.textContent = number(tone.lo, 3);
@@ -218,24 +230,27 @@ export class ToneEdge {
       grip.place(0, this.y(tone[which]), { now: tone[which], ...range, text: quantity(tone[which], sheet.unit, 3) });
     }
     this.curve.update(curves(sheet).map((value) => ({ value, text: say(`curve_${value}`) })), tone.curve);
-    this.ramps.update(RAMPS.map((value) => ({ value, text: say(/** @type {import('./words.js').Word} */ (`ramp_${value}`)), mark: gradient(value, '90deg') })), tone.ramp);
+    /** @type {[string[], string, (name: string) => string, string]} */
+    const [names, kind, mark, now] = this.hue ? [HUES, 'hues', hueGradient, tone.hues] : [RAMPS, 'ramp', (name) => gradient(name, '90deg'), tone.ramp];
+    this.ramps.update(names.map((value) => ({ value, text: say(/** @type {import('./words.js').Word} */ (`${kind}_${value}`)), mark: mark(value) })), now);
   }
 
-  /** The ramp as this tone lays it along the axis. @param {import('./lut.js').Tone} tone */
-  drawStrip(tone) {
-    const [rows, across] = [Math.round(this.height * devicePixelRatio), 9];
-    Object.assign(this.strip, { width: across, height: rows });
-    const context = /** @type {CanvasRenderingContext2D} */ (this.strip.getContext('2d'));
-    const picture = context.createImageData(across, rows);
-    const colours = ramp(tone.ramp);
-    for (let i = 0; i < rows; i++) {
-      const t = shade(this.value(this.at(((i + 0.5) / rows) * this.height)), tone);
-      const k = 3 * step(t);
-      // Beyond its ends the ramp goes on as a thread: all of that is one colour.
-      const from = t < 0 || t > 1 ? across - 2 : 0;
-      for (let x = from; x < across; x++) picture.data.set([colours[k], colours[k + 1], colours[k + 2], 255], 4 * (i * across + x));
-    }
-    context.putImageData(picture, 0, 0);
+  /** Whose tone this is, and with two sheets what the key says across. */
+  describe() {
+    const { state, root } = this;
+    const { mate, sheet, toned } = state;
+    root.classList.toggle('two', Boolean(mate));
+    dress(this.unit, { hidden: Boolean(mate) });
+    dress(this.which.root, { hidden: !mate });
+    this.unit.textContent = unit(sheet.unit);
+    this.bright.root.setAttribute('aria-label', say(this.hue ? 'tone_high' : 'tone_bright'));
+    this.dark.root.setAttribute('aria-label', say(this.hue ? 'tone_low' : 'tone_dark'));
+    if (!mate) return this.across.replaceChildren();
+    const title = (/** @type {import('./atlas.js').Sheet} */ s) => [s.title || s.name, unit(s.unit)].filter(Boolean).join(' ');
+    this.which.update([{ value: 'first', text: title(sheet) }, { value: 'second', text: title(mate) }], state.second ? 'second' : 'first');
+    const other = toned === mate ? sheet : mate;
+    const { lo, hi } = state.toneOf(other);
+    this.across.textContent = say('tone_across', { lo: number(lo, 2), hi: number(hi, 2), unit: unit(other.unit) });
   }
 
   drawTicks() {

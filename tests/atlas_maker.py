@@ -148,6 +148,21 @@ def write_atlas(
     return root
 
 
+def add_epoch(folder: str | Path, sheets: list[SheetData], name: str, redshift: float) -> Path:
+    """Write `sheets` as a further epoch of an atlas that `write_atlas` wrote."""
+    root = Path(folder)
+    atlas = json.loads((root / "atlas.json").read_text())
+    create_group(root / name)
+    pixel = (atlas["view"]["u"][1] - atlas["view"]["u"][0]) / atlas["pixels"][0]
+    given = {sheet.name: sheet for sheet in sheets}
+    described = [_write_sheet(root, sheet, given, pixel, name, 1 / (1 + redshift)) for sheet in sheets]
+    more = {"name": name, "redshift": redshift, "scale_factor": 1 / (1 + redshift), "sheets": described}
+    atlas["epochs"].append(atlas["epochs"][0] | more | {"age_gyr": 13.8, "catalogue": None})
+    (root / "atlas.json").write_text(json.dumps(atlas, indent=1))
+    write_checksums(root)
+    return root
+
+
 def pyramid_of(sheet: SheetData, given: dict[str, SheetData], whole: bool) -> list[NDArray[np.float64]]:
     """The sheet's values level by level, in float64, each (slabs, rows, columns); NaN where a mean has nothing."""
     values = sheet.values.astype(np.float64)
@@ -194,8 +209,15 @@ def write_levels(folder: Path, levels: list[NDArray[np.float64]], coding: Coding
         write_array(folder / str(level), coding.encode(values))
 
 
-def _write_sheet(root: Path, sheet: SheetData, given: dict[str, SheetData], pixel: float) -> dict[str, Any]:
-    folder = root / EPOCH / sheet.name
+def _write_sheet(
+    root: Path,
+    sheet: SheetData,
+    given: dict[str, SheetData],
+    pixel: float,
+    epoch: str = EPOCH,
+    scale_factor: float = SCALE_FACTOR,
+) -> dict[str, Any]:
+    folder = root / epoch / sheet.name
     levels = pyramid_of(sheet, given, whole=False)
     slabs = sheet.values.shape[0]
     whole = pyramid_of(sheet, given, whole=True) if slabs > 1 else levels
@@ -218,7 +240,7 @@ def _write_sheet(root: Path, sheet: SheetData, given: dict[str, SheetData], pixe
         "range": [float(coarse.min()), float(coarse.max())],
     }
     if sheet.kind == "sum":
-        area = (pixel * u.Mpc * (SCALE_FACTOR if sheet.area == "proper" else 1.0)) ** 2
+        area = (pixel * u.Mpc * (scale_factor if sheet.area == "proper" else 1.0)) ** 2
         per_pixel = (area * u.Unit(sheet.unit)).to_value(u.Unit(sheet.total_unit))
         totals = np.nansum(levels[0], axis=(1, 2)) * per_pixel
         described |= {"total": float(totals.sum()), "total_unit": sheet.total_unit, "totals": totals.tolist()}

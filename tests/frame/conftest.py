@@ -5,7 +5,7 @@ import json
 import numpy as np
 import pytest
 from astropy.table import Table
-from atlas_maker import SheetData, make_atlas, write_atlas
+from atlas_maker import SheetData, add_epoch, make_atlas, make_sheets, write_atlas
 from live import Live
 from playwright.sync_api import sync_playwright
 from screen import Screen, how
@@ -68,13 +68,21 @@ def even_folder(tmp_path_factory):
 
 
 @pytest.fixture(scope="session")
+def twice_folder(tmp_path_factory):
+    """The volume of `folder` run again from another seed, and a later epoch of that run."""
+    place = tmp_path_factory.mktemp("twice") / "again.atlas"
+    make_atlas(place, columns=2048, rows=1536, seed=2, atlas_id="0ddba110ddba1100")
+    return add_epoch(place, make_sheets(2048, 1536, seed=3), "z0.00", 0.0)
+
+
+@pytest.fixture(scope="session")
 def atlas(folder):
     return tilemap.open(folder)
 
 
 @pytest.fixture(scope="session")
-def live(folder, even_folder):
-    server = Live(make_app([folder, even_folder]))
+def live(folder, even_folder, twice_folder):
+    server = Live(make_app([folder, even_folder, twice_folder]))
     yield server
     server.stop()
 

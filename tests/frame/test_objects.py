@@ -81,7 +81,7 @@ def test_rings_never_pile_up(open_screen):
           const { objects } = await (await fetch('objects?limit=500')).json();
           const canvas = document.createElement('canvas');
           const note = document.createElement('aside');
-          const marks = new Markers(canvas, note, { object: null, markers: true, epoch: {} }, { wake() {} });
+          const marks = new Markers(canvas, note, { object: null, markers: true, epoch: {}, ownPart: [0, 1] }, { wake() {} });
           marks.setList(objects);
           return marks.thinned(new View(50, 37, 100, 900, 600)).map(({ x, y, r }) => [x, y, r]);
         }"""

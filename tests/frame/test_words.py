@@ -40,7 +40,10 @@ def test_every_word_is_used():
     rest = "\n".join(file.read_text() for file in STATIC.glob("*.js"))
     rest = re.sub(r"const WORDS = .*?\n\}\);", "", rest, flags=re.S)
     # Names that are put together: `curve_${value}`, `${key}_title`.
-    made = [re.compile(part) for part in (r"trouble_\w+", r"curve_\w+", r"ramp_\w+", r"key_\w+", r"\w+_title")]
+    made = [
+        re.compile(part)
+        for part in (r"trouble_\w+", r"curve_\w+", r"ramp_\w+", r"hues_\w+", r"how_\w+", r"key_\w+", r"\w+_title")
+    ]
     for name in table():
         if name.startswith("key ") or any(pattern.fullmatch(name) for pattern in made):
             continue
@@ -92,7 +95,7 @@ def test_a_number_is_typed_as_it_is_written(open_screen, live):
 
 
 # What an atlas brings along: its titles, axes, columns, names and units; and units that lengths are given in.
-DATA = r"(?<![A-Za-z])(mass|radius|name|mark|alone|dust|kpc|Mpc|Gpc|pc|mas)(?![A-Za-z])"
+DATA = r"(?<![A-Za-z])(mass|radius|name|mark|alone|again|dust|kpc|Mpc|Gpc|pc|mas)(?![A-Za-z])"
 
 
 # The table with every text in brackets, and what is filled in outside them again.

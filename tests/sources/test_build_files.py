@@ -160,7 +160,7 @@ MISTAKES = [
     ("weight: gas", "weight: gass", "sheets.temperature.weight: 'gass' is no sheet: the nearest known is 'gas'"),
     ("weight: gas, ", "", "sheets.temperature: a mean needs weight: the name of a sum sheet"),
     ("sum: count", "sum: count, weight: gas", "sheets.dark: weight goes with mean"),
-    ("sum: count", "title: D", "sheets.dark: give sum: or mean:"),
+    ("sum: count", "title: D", "sheets.dark: give sum:, mean: or peak:"),
     ("mean: temperature", "mean: count", "the mean of a count is always one"),
     ("fields: {temperature: G/T", "fields: {count: G/C, temperature: G/T", "'count' is there without being listed"),
     ("mass: G/Masses", "mass: -2 Msun", "a mass may not be negative"),

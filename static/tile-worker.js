@@ -164,15 +164,41 @@ async function bring(address, signal, fresh) {
   if (answer.status === 410) throw new Trouble('gone');
   if (answer.status === 404) throw new Trouble('missing');
   if (!answer.ok) throw new Trouble('server');
-  const packed = await answer.arrayBuffer();
-  let bytes;
-  try {
-    bytes = await new Response(new Blob([packed]).stream().pipeThrough(new DecompressionStream('gzip'))).arrayBuffer();
-  } catch {
-    throw new Trouble('damaged');
-  }
-  if (bytes.byteLength !== 2 * PIXELS) throw new Trouble('damaged');
+  const bytes = await unpacked(answer);
   return new Uint16Array(bytes);
+}
+
+/**
+ * The content of a gzip member, piece by piece: what the browser gathers for `arrayBuffer()` or a Blob stays in memory until
+ * this worker next collects its garbage, which it has little cause to.
+ * @param {Response} answer
+ * @returns {Promise<ArrayBuffer>}
+ */
+async function unpacked(answer) {
+  const source = /** @type {ReadableStream<Uint8Array<ArrayBuffer>>} */ (answer.body).getReader();
+  const { readable, writable } = new DecompressionStream('gzip');
+  const [sink, result] = [writable.getWriter(), readable.getReader()];
+  const bytes = new Uint8Array(2 * PIXELS);
+  const read = async () => {
+    let length = 0;
+    for (;;) {
+      const { done, value } = await result.read();
+      if (done) return length;
+      if (length + value.length > bytes.length) throw new RangeError('too long');
+      bytes.set(value, length);
+      length += value.length;
+    }
+  };
+  const length = read().catch(() => -1);
+  for (;;) {
+    const { done, value } = await source.read();
+    if (done) break;
+    // What is wrong with the bytes is heard at the other end.
+    sink.write(value).catch(() => {});
+  }
+  sink.close().catch(() => {});
+  if ((await length) !== bytes.length) throw new Trouble('damaged');
+  return bytes.buffer;
 }
 
 /** Slabs add up as surface densities. Nothing anywhere stays nothing (NaN). @param {(Uint16Array|null)[]} tiles @param {any} coding */

@@ -23,6 +23,14 @@ BENCHES = {
     "engine/growth": "engine:growth",
     "engine/cores": "engine:cores",
     "engine/tiles": "engine:tiles",
+    "frame/median_ms": "frame:median",
+    "frame/p95_ms": "frame:slowest",
+    "frame/recolour_ms": "frame:recolour",
+    "frame/first_view_s": "frame:first_view",
+    "frame/first_view_slow_s": "frame:first_view_slow",
+    "frame/first_view_mb": "frame:first_view_size",
+    "frame/code_kb": "frame:code",
+    "frame/heap_growth": "frame:heap",
 }
 
 

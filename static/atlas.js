@@ -90,9 +90,12 @@ export class Atlas {
     return [Math.ceil(columns / this.tile), Math.ceil(rows / this.tile)];
   }
 
-  /** The level whose pixels come nearest to a device pixel. @param {number} size side of a device pixel, atlas unit */
+  /**
+   * The level whose pixels come nearest to a device pixel, a little for coarser ones: one level finer is four times the bytes.
+   * @param {number} size side of a device pixel, atlas unit
+   */
   levelFor(size) {
-    return Math.min(Math.max(Math.round(Math.log2(size / this.pixel) + 0.1), 0), this.levels - 1);
+    return Math.min(Math.max(Math.round(Math.log2(size / this.pixel) + 0.2), 0), this.levels - 1);
   }
 
   /**

@@ -157,8 +157,12 @@ export class Pane {
     if (!plate) return { needed: [], more: [] };
     const { layer } = plate;
     const { level, range } = this.frameOf(view, layer);
-    const needed = [{ layer, level: layer.atlas.levels - 1, row: 0, column: 0 }, ...places(layer, level, range, view)];
-    const more = [];
+    const needed = places(layer, level, range, view);
+    /** @type {Place[]} */ const more = [];
+    // The tile that stands in for all others comes first, where there are many of them.
+    const base = { layer, level: layer.atlas.levels - 1, row: 0, column: 0 };
+    if (level < layer.atlas.levels - 2) needed.unshift(base);
+    else if (ahead) more.push(base);
     if (ahead && layer.names.length === 1) {
       const [across, down] = layer.atlas.grid(level);
       const { c0, c1, r0, r1 } = layer.atlas.range(level, view.bounds);

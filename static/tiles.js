@@ -19,11 +19,15 @@ const BITMAP_BYTES = 512 * 512 * 4;
 const FIRST_DELAY = 500;
 const LONGEST_DELAY = 15000;
 
+/** Two workers on a small machine, four at most. They load while the atlas is still being read. */
+const POOL = Array.from({ length: Math.min(Math.max((navigator.hardwareConcurrency ?? 2) - 1, 2), 4) }, () =>
+  new Worker(new URL('./tile-worker.js', import.meta.url), { type: 'module', name: document.baseURI }));
+
 export class Tiles {
-  /** @param {Listener} listener @param {{workers?: number, budget?: number}} [settings] budget in bytes */
-  constructor(listener, { workers = poolSize(), budget = room() } = {}) {
+  /** @param {Listener} listener */
+  constructor(listener) {
     this.listener = listener;
-    this.budget = budget;
+    /** bytes */ this.budget = room();
     /** @type {Map<string, Tile>} */
     this.all = new Map();
     /** @type {Set<string>} */
@@ -39,11 +43,8 @@ export class Tiles {
     this.pause = { until: 0, delay: 0 };
     this.asks = new Map();
     this.luts = 0;
-    this.workers = Array.from({ length: workers }, () => {
-      const worker = new Worker(new URL('./tile-worker.js', import.meta.url), { type: 'module', name: document.baseURI });
-      worker.onmessage = ({ data }) => this.hear(worker, data);
-      return worker;
-    });
+    this.workers = POOL;
+    for (const worker of this.workers) worker.onmessage = ({ data }) => this.hear(worker, data);
     addEventListener('online', () => this.resume());
   }
 
@@ -279,12 +280,7 @@ export class Tiles {
   }
 }
 
-/** Two workers on a small machine, four at most. */
-function poolSize() {
-  return Math.min(Math.max((navigator.hardwareConcurrency ?? 2) - 1, 2), 4);
-}
-
 /** Bytes that tiles may take: less on a small device, as far as the browser says (`deviceMemory`, GiB). */
 function room() {
-  return Math.min(/** @type {any} */ (navigator).deviceMemory ?? 8, 8) * 32e6;
+  return Math.min(/** @type {any} */ (navigator).deviceMemory ?? 8, 8) * 24e6;
 }

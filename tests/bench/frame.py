@@ -249,9 +249,18 @@ def colours(fragment: str) -> list[float]:
 
 def recolour() -> Iterator[Figure]:
     times = sorted(colours(HERE))
-    yield figure(
-        "frame/recolour_ms", times[0], "ms", f"50 ms; best of {len(times)} changes", median=statistics.median(times)
-    )
+    compared = f"50 ms; best of {len(times)} changes"
+    yield figure("frame/recolour_ms", times[0], "ms", compared, median=statistics.median(times))
+
+
+def blend() -> Iterator[Figure]:
+    times = sorted(colours(f"{HERE}&sheet=gas&hue=temperature"))
+    compared = f"100 ms; best of {len(times)} changes, brightness from one sheet and hue from another"
+    yield figure("frame/blend_ms", times[0], "ms", compared, median=statistics.median(times))
+
+
+# What has come, in bytes as sent, in the page or in one of its workers, where tiles are fetched.
+CAME = "performance.getEntriesByType('resource').reduce((sum, { transferSize }) => sum + transferSize, 0)"
 
 
 def first_views(slow: bool, rounds: int = ROUNDS) -> list[tuple[float, float, float]]:
@@ -260,8 +269,9 @@ def first_views(slow: bool, rounds: int = ROUNDS) -> list[tuple[float, float, fl
     for _ in range(rounds):
         with page(slow=slow) as (sheet, _tools, came):
             seconds = sheet.evaluate("performance.getEntriesByName('first-view')[0].startTime") / 1000
+            tiles = sum(worker.evaluate(CAME) for worker in sheet.workers)
             code = sum(sum(came.get(kind, [])) for kind in ("Script", "Stylesheet"))
-            found.append((seconds, sum(map(sum, came.values())) / 1e6, code / 1e3))
+            found.append((seconds, (sheet.evaluate(CAME) + sum(came["Document"]) + tiles) / 1e6, code / 1e3))
     return found
 
 

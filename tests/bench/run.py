@@ -26,6 +26,7 @@ BENCHES = {
     "frame/median_ms": "frame:median",
     "frame/p95_ms": "frame:slowest",
     "frame/recolour_ms": "frame:recolour",
+    "frame/blend_ms": "frame:blend",
     "frame/first_view_s": "frame:first_view",
     "frame/first_view_slow_s": "frame:first_view_slow",
     "frame/first_view_mb": "frame:first_view_size",

@@ -163,7 +163,9 @@ async function bring(address, signal, fresh) {
   if (answer.status === 204) return null;
   if (answer.status === 410) throw new Trouble('gone');
   if (answer.status === 404) throw new Trouble('missing');
-  if (!answer.ok) throw new Trouble('server');
+  // The server itself says in JSON that a file is damaged; another 502 is a proxy that has lost the server.
+  const told = answer.headers.get('Content-Type')?.startsWith('application/json');
+  if (!answer.ok) throw new Trouble(answer.status === 502 && told ? 'damaged' : 'server');
   const bytes = await unpacked(answer);
   return new Uint16Array(bytes);
 }

@@ -1,7 +1,15 @@
 """The instruments on the edges, worked by hand and by keys."""
 
+import json
+import re
+
 import numpy as np
 import pytest
+from atlas_maker import make_atlas
+from live import Live
+
+from tilemap.cosmology import Cosmology
+from tilemap.server.app import make_app
 
 
 def drag(screen, start, end):
@@ -128,6 +136,52 @@ def test_lengths_read_as_comoving_proper_or_angle(screen, measure, said):
     # z = 0.5: a = 2/3; the invented atlas says 9.27 comoving kpc per arcsecond.
     screen.go(f"#u=50&v=37&width=60&lengths={measure}")
     assert screen.page.inner_text("#scale .number") == said
+
+
+@pytest.fixture(scope="module")
+def reckoned(tmp_path_factory):
+    """An atlas whose epoch carries what a build reckons from the parameters of its cosmology."""
+    folder = make_atlas(tmp_path_factory.mktemp("reckoned") / "sky.atlas", columns=512, rows=512, slabs=1)
+    described = json.loads((folder / "atlas.json").read_text())
+    cosmology = Cosmology(H0=67.7, Om0=0.31, Ode0=0.69)
+    described["epochs"][0] |= {
+        "kpc_per_arcsec_comoving": cosmology.kpc_per_arcsec_comoving(0.5),
+        "kpc_per_arcsec_proper": cosmology.kpc_per_arcsec_proper(0.5),
+    }
+    (folder / "atlas.json").write_text(json.dumps(described))
+    server = Live(make_app([folder]))
+    yield f"{server.address}/sky/"
+    server.stop()
+
+
+@pytest.mark.parametrize(
+    ("measure", "across", "ten_mpc"),
+    # Comoving transverse distance at z = 0.5 by astropy 8.0.2, LambdaCDM(H0=67.7, Om0=0.31, Ode0=0.69, Tcmb0=0):
+    # 1946.0662648739783 Mpc, so that 10 comoving Mpc are 17.665106439772533 arcmin on the sky; proper lengths are 1 / 1.5.
+    [("comoving", "60 Mpc", "10 Mpc"), ("proper", "40 Mpc", "6.666667 Mpc"), ("angle", "1.77°", "17.66511 arcmin")],
+)
+def test_the_ladder_and_the_tape_agree_with_astropy(open_screen, reckoned, measure, across, ten_mpc):
+    screen = open_screen(f"#u=50&v=50&width=60&lengths={measure}&line=45:50,55:50", address=reckoned)
+    assert screen.page.inner_text("#scale .number") == across
+    screen.press("y")
+    screen.page.wait_for_timeout(100)
+    assert screen.page.evaluate("navigator.clipboard.readText()") == f"length\t{ten_mpc}"
+    # The rung of a length is drawn as long as that length is on the map.
+    names, lengths = screen.page.evaluate(
+        """() => ['text:not(.start)', '.rung.true'].map((part) => [...document.querySelectorAll(`#scale ${part}`)]
+        .map((e) => part[0] === 't' ? [e.textContent, Number(e.getAttribute('y'))] : [e.getBBox().width, e.getBBox().y]))"""
+    )
+    units = {"Mpc": 1.0, "kpc": 1e-3, "°": 60.0, "′": 1.0, "″": 1 / 60}
+    mpc = {"comoving": 1.0, "proper": 1.5, "angle": 10 / 17.665106439772533}[measure]
+    per_mpc = screen.map_box()["width"] / 60
+    known = 0
+    for long, y in lengths:
+        for text, line in names:
+            if abs(line + 3 - y) < 1:
+                number, unit = re.match(r"([\d.]+)\s?(.+)", text).groups()
+                assert long == pytest.approx(float(number) * units[unit] * mpc * per_mpc, abs=0.1)
+                known += 1
+    assert known >= 2
 
 
 def test_slabs_stand_as_high_as_their_mass(screen, atlas):

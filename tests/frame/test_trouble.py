@@ -68,3 +68,81 @@ def test_a_start_without_a_server_is_tried_again(open_screen, own):
     screen.wait_for_status("The atlas cannot be read")
     screen.settle(timeout=12)
     assert screen.pixels()[:, :, :3].max() > 100
+
+
+def test_a_tile_that_the_server_cannot_read_keeps_no_other_from_coming(open_screen, own):
+    """The index of a file is damaged: its tiles are answered with 502, those of other levels come as ever."""
+    server, folder = own
+    shard = folder / "z0.50" / "gas" / "0" / "c" / "0" / "0" / "0"
+    shard.write_bytes(shard.read_bytes()[:-40] + bytes(40))
+    screen = open_screen("#u=20&v=20&width=40&tone=3e3:3e6", address=f"{server.address}/own/", settle=False)
+    screen.wait_for_status("A tile is damaged")
+    screen.settle()
+    shown = screen.pixels()[20:-40, 60:-20, :3]
+    assert shown.max() > 60 and len(np.unique(shown.reshape(-1, 3), axis=0)) > 50
+    screen.go("#u=50&v=25&width=100&tone=3e3:3e6")  # a coarser level, whole
+    assert screen.value() is not None
+
+
+def test_a_connection_lost_in_mid_flight_is_borne_and_the_flight_arrives(open_screen, own):
+    server, _ = own
+    screen = open_screen("#u=90&v=15&width=2&tone=3e3:3e6", address=f"{server.address}/own/", motion=True)
+    screen.go("#u=10&v=40&width=2&tone=3e3:3e6", settle=False)
+    screen.page.wait_for_timeout(300)
+    server.stop()
+    screen.wait_for_status("The server does not answer", timeout=15)
+    screen.page.wait_for_timeout(500)
+    assert screen.pixels()[:, :, :3].max() > 60  # coarse tiles stand in where the flight has come to
+    server.start()
+    screen.settle(timeout=20)
+    assert screen.place() == (10, 40, 2)
+    fresh = open_screen("#u=10&v=40&width=2&tone=3e3:3e6", address=f"{server.address}/own/")
+    assert np.array_equal(screen.pixels(), fresh.pixels())
+
+
+def test_a_browser_that_goes_offline_and_back_fetches_what_is_missing(open_screen, own):
+    server, _ = own
+    screen = open_screen("#u=90&v=15&width=12", address=f"{server.address}/own/", fresh=True)
+    screen.page.context.set_offline(True)
+    screen.go("#u=10&v=40&width=3", settle=False)
+    screen.wait_for_status("The server does not answer")
+    screen.page.context.set_offline(False)
+    screen.settle(timeout=20)
+    screen.wait_for_status("answers again")
+
+
+@pytest.mark.parametrize("how", ["no scripts at all", "a module that does not come"])
+def test_without_its_modules_the_page_says_what_it_needs(browser, live, how):
+    context = browser.new_context(java_script_enabled=how != "no scripts at all")
+    page = context.new_page()
+    page.route("**/frame/map.js", lambda route: route.abort())
+    page.goto(f"{live.address}/field/")
+    page.wait_for_timeout(300)
+    assert page.locator("#status").is_visible()
+    assert "needs JavaScript with modules" in page.inner_text("#status")
+    context.close()
+
+
+@pytest.mark.parametrize(("width", "height"), [(320, 240), (240, 180), (160, 120), (800, 300), (60, 60)])
+def test_in_a_tiny_window_the_map_stays_and_everything_comes_back_with_room(open_screen, width, height):
+    screen = open_screen("#u=50&v=37&width=15&tone=3e3:3e6", width=width, height=height)
+    box = screen.map_box()
+    assert box["width"] * box["height"] > 0.3 * width * height or width == 60
+    assert box["y"] >= 0 and box["y"] + box["height"] <= height
+    assert screen.pixels()[:, :, :3].max() > 60
+    screen.page.set_viewport_size({"width": 1100, "height": 760})
+    screen.page.wait_for_timeout(300)
+    screen.settle()
+    assert not screen.errors
+    for part in ("#title", "#sheets", "#census", "#tone", "#scale", "#depth"):
+        assert screen.page.is_visible(part)
+    assert screen.place() == (50, 37, 15)
+
+
+def test_a_catalogue_that_cannot_be_read_leaves_the_map_and_is_asked_again(open_screen, live):
+    refused = iter([True] * 2)
+    live.refuse = lambda path: path.endswith("/census") and next(refused, False)
+    screen = open_screen("#u=50&v=37&width=60&tone=3e3:3e6", fresh=True)
+    assert screen.pixels()[:, :, :3].max() > 100
+    screen.page.wait_for_selector("#census .bar", timeout=12000)
+    assert not screen.errors

@@ -8,8 +8,8 @@ import { say } from './words.js';
 /** @typedef {import('./tape.js').Laid} Laid */
 /**
  * What the server says of an outline; see tilemap.outline.Inside.
- * @typedef {{area: number, outside: number, mean: number|null, spread: number|null, unit: string, total: number,
- *   total_unit: string, total_of: string, level: number, pixel: number}} Inside
+ * @typedef {{area: number, outside: number, mean: number|null, spread: number|null, unit: string, total: number|null,
+ *   total_unit: string, total_of: string, together: number|null, level: number, pixel: number}} Inside
  */
 /** @typedef {import('./words.js').Word} Word */
 /** @typedef {{key: string, name: string, shown: string, copied: string, about?: string}} Row */
@@ -122,10 +122,12 @@ export class TapeNote {
       rows.push({ key, name: say(key), shown: shown.trim(), copied: there ? `${exact(value)} ${of}`.trim() : '', about });
     };
     if (this.failed) return rows;
-    const weight = this.state.sheet.kind === 'mean' ? this.title(this.state.sheet.weight ?? '') : '';
+    const weight = this.state.sheet.weight ? this.title(this.state.sheet.weight) : '';
     add('tape_mean', inside?.mean, inside?.unit ?? '', weight ? say('tape_weighted', { weight }) : say('tape_by_area'));
     add('tape_spread', inside?.spread, inside?.unit ?? '', say('tape_deviation'));
-    add('tape_total', inside?.total, inside?.total_unit ?? '', weight);
+    const { kind } = this.state.sheet;
+    if (kind === 'dispersion' || kind === 'peak') add('tape_together', inside?.together, inside?.unit ?? '', say(kind === 'peak' ? 'tape_highest' : 'tape_common'));
+    if (kind !== 'peak') add('tape_total', inside?.total, inside?.total_unit ?? '', weight);
     return rows;
   }
 

@@ -4,12 +4,14 @@ import astropy.units as u
 import numpy as np
 import pytest
 from atlas_maker import SCALE_FACTOR, SheetData, make_atlas, write_atlas
+from build_maker import changed, description, particles, write_build
 from hypothesis import given
 from hypothesis import strategies as st
 from PIL import Image, ImageDraw
 
 import tilemap
 from tilemap import outline as outline_room
+from tilemap.build_atlas import build_atlas
 from tilemap.errors import InputError
 from tilemap.outline import coverage
 
@@ -179,6 +181,23 @@ def test_totals_of_a_proper_density_are_over_proper_area(tmp_path):
     atlas = tilemap.open(write_atlas(tmp_path / "p.atlas", [sheet]))
     found = atlas.inside("gas", [(50, 50), (51, 50), (51, 51), (50, 51)])
     assert found.total == pytest.approx(found.mean * 1e6 * SCALE_FACTOR**2, rel=1e-9)
+
+
+def test_a_dispersion_inside_is_that_about_the_common_mean(tmp_path):
+    spread = {"species": "gas", "dispersion": "velocity", "unit": "km/s", "coding": "linear"}
+    build = changed(description(), view__pixels=1024, view__slabs=2, sheets__spread=spread)
+    atlas = tilemap.open(build_atlas(write_build(tmp_path, build, particles(3000)), tmp_path / "small.atlas"))
+    found = atlas.inside("spread", [(2, 2), (6, 2), (6, 6), (2, 6)])
+    window = {"centre": (4.0, 4.0), "width": 4.0}
+    gas, velocity, own = (
+        np.nan_to_num(atlas.read(name, **window).values.astype(float)) for name in ("gas", "velocity", "spread")
+    )
+    _, about = weighted(velocity, gas)
+    assert found.together == pytest.approx(np.sqrt(np.average(own**2, weights=gas) + about**2), rel=1e-6)
+    assert found.mean == pytest.approx(np.average(own, weights=gas), rel=1e-6)
+    # One pixel of that size, as the pyramid puts it together from its coarsest level.
+    assert found.together == pytest.approx(float(atlas.read("spread", pixels=1, **window).values[0, 0]), rel=1e-2)
+    assert atlas.inside("velocity", [(2, 2), (6, 2), (6, 6), (2, 6)]).together is None
 
 
 @pytest.mark.parametrize(

@@ -39,15 +39,19 @@ class Inside:
     outside : float
         Share of the outline's area that lies outside the view, and does not count.
     mean, spread : float
-        In `unit`. Of a sum sheet: the mean of its pixels over area, and their standard deviation about it. Of a mean
-        sheet: the same with each pixel weighted by its weight sheet too, over the pixels that have a value. NaN where
-        nothing is there.
+        In `unit`. Of a sum sheet: the mean of its pixels over area, and their standard deviation about it. Of a mean or
+        dispersion sheet: the same with each pixel weighted by its weight sheet too, over the pixels that have a value.
+        NaN where nothing is there.
     unit : str
     total : float
-        Of a sum sheet, its own: surface density times area, summed. Of a mean sheet: that of its weight.
+        Of a sum sheet, its own: surface density times area, summed. Of a mean or a
+        dispersion: that of its weight. NaN for peaks.
     total_unit : str
     total_of : str
         The sheet that `total` is of.
+    together : float or None
+        Of a dispersion sheet: the dispersion of all that is inside about its common mean. Of a sheet of peaks: the
+        highest of the pixels that it touches. None of others.
     level : int
         Of the pyramid, that was read.
     pixel : float
@@ -62,6 +66,7 @@ class Inside:
     total: float
     total_unit: str
     total_of: str
+    together: float | None
     level: int
     pixel: float
 
@@ -157,10 +162,16 @@ def inside(
     else:
         dense, weight, of = values, share, described
     mean, spread = _moments(values, weight)
+    together = None
+    if described["kind"] == "dispersion":
+        about = _moments(np.nan_to_num(atlas.read(described["mean"], **window).values.astype(np.float64)), weight)[1]
+        # What the pixels are about their own means, and these means about the common one.
+        together = math.hypot(about, mean, spread)
     area = float(share.sum()) * pixel**2
     total, total_unit = _total(atlas, of, float((dense * share).sum()) * pixel**2, epoch)
     if described["kind"] == "peak":
         total = math.nan  # the highest of several pixels add up to nothing
+        together = float(values[share > 0].max())
     within = min(x.min(), y.min()) >= 0 and (np.array([x.max(), y.max()]) <= atlas.info["pixels"]).all()
     return Inside(
         area=area,
@@ -171,6 +182,7 @@ def inside(
         total=total,
         total_unit=total_unit,
         total_of=of["name"],
+        together=together,
         level=level,
         pixel=pixel,
     )

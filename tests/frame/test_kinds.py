@@ -60,3 +60,16 @@ def test_seen_from_afar_a_peak_reads_as_the_highest_of_its_pixels(open_screen, a
         u, v = screen.under(x, y)
         expected = float(coarse[int((BOX - v) / (2 * PIXEL)), int(u / (2 * PIXEL))])
         assert screen.value() == pytest.approx(expected, rel=2e-6)
+
+
+@pytest.mark.parametrize(("sheet", "unit"), [("spread", "km / s"), ("peak", "Msun / kpc2")])
+def test_an_outline_says_the_dispersion_and_the_peak_of_all_inside(open_screen, address, built, sheet, unit):
+    points = [(2.0, 2.5), (6.0, 3.0), (5.0, 6.5)]
+    outline = ",".join(f"{u}:{v}" for u, v in points)
+    screen = open_screen(f"#u=4&v=4&width=8&sheet={sheet}&outline={outline}", address=address)
+    button = screen.page.locator("#tape [data-row=tape_together]:not([disabled])")
+    button.click()
+    screen.page.wait_for_timeout(100)
+    value, said = screen.page.evaluate("navigator.clipboard.readText()").split(" ", 1)
+    assert float(value) == pytest.approx(built.inside(sheet, points).together, rel=1e-6) and said == unit
+    assert screen.page.locator("#tape [data-row=tape_total]").count() == (sheet == "spread")

@@ -123,12 +123,12 @@ def test_a_window_of_depth_changes_the_numbers_inside(screen, atlas):
 def test_a_large_outline_says_in_words_how_coarse_its_numbers_are(screen, atlas):
     # 2048 x 1536 pixels are read as they are; the answer for a larger atlas is put in its place.
     found = {"area": 100.0, "outside": 0.25, "mean": 3.0, "spread": 1.0, "unit": "Msun / kpc2", "total": 5.0}
-    found |= {"total_unit": "Msun", "total_of": "gas", "level": 2, "pixel": 0.2}
+    found |= {"total_unit": "Msun", "total_of": "gas", "together": None, "level": 2, "pixel": 0.2}
     screen.page.route("**/inside?*", lambda route: route.fulfill(json=found))
     screen.go(f"#u=50&v=37&width=41{outline(SQUARE)}")
     text = answered(screen).page.inner_text("#tape")
     screen.page.unroute("**/inside?*")
-    assert "averages over 200 kpc: level 2" in text and "25 % of it lies outside" in text
+    assert "coarser pixels of 200 kpc: level 2" in text and "25 % of it lies outside" in text
 
 
 def test_a_free_hand_draws_an_outline_that_holds_what_was_drawn(screen):

@@ -210,6 +210,7 @@ def test_a_dispersion_inside_is_that_about_the_common_mean(tmp_path):
         ([("a", "b")] * 3, "in numbers"),
         ([(1, 1), (2, 2), (3, float("nan"))], "finite"),
         ([(101, 1), (102, 1), (102, 2)], r"outside the view.*u 0 to 100"),
+        ([(-9, 3), (-9, -9), (3, -9)], "outside the view"),  # round the corner of the view
         ([(0, 0)] * 1001, "3 to 1000"),
     ],
 )

@@ -132,17 +132,20 @@ def inside(
     x, y = (corners[:, 0] - view["u"][0]) / finest, (view["v"][1] - corners[:, 1]) / finest
     low = np.floor([max(x.min(), 0), max(y.min(), 0)])
     high = np.ceil(np.minimum([x.max(), y.max()], atlas.info["pixels"]))
+    beyond = InputError(
+        f"the outline is u {span(*_ends(corners[:, 0]))}, v {span(*_ends(corners[:, 1]))}, outside the view, which is "
+        f"u {span(*view['u'])}, v {span(*view['v'])} {view['unit']}"
+    )
     if (high <= low).any():
-        raise InputError(
-            f"the outline is u {span(*_ends(corners[:, 0]))}, v {span(*_ends(corners[:, 1]))}, outside the view, which is "
-            f"u {span(*view['u'])}, v {span(*view['v'])} {view['unit']}"
-        )
+        raise beyond
     level = max(0, math.ceil(math.log(np.prod(high - low) / MOST_PIXELS, 4)))
     level = min(level, atlas.info["levels"] - 1)
     side = 2.0**level
     low, high = np.floor(low / side).astype(int), np.ceil(high / side).astype(int)
     columns, rows = (high - low).tolist()
     share = coverage(np.stack([x / side - low[0], y / side - low[1]], axis=1), rows, columns)
+    if not share.any():
+        raise beyond
     pixel = finest * side
     window: dict[str, Any] = {
         "centre": (view["u"][0] + (low[0] + high[0]) / 2 * pixel, view["v"][1] - (low[1] + high[1]) / 2 * pixel),

@@ -203,7 +203,7 @@ export class Frame {
     this.grid.draw(context, view);
     this.rulers.draw(context, view, 0.86 * em, this.reading.cursor);
     tape.draw(context, view, 0.92 * em);
-    this.tapeNote.tie(context, tape.path(view), this.map.canvas.getBoundingClientRect());
+    this.tapeNote.tie(context, tape.path(view), this.map.canvas);
   }
 
   /** Asks for tiles now, or at most every so often while things move. @param {number} every ms */

@@ -170,11 +170,13 @@ export class TapeNote {
 
   /**
    * The thin line from the tape to its note.
-   * @param {CanvasRenderingContext2D} context @param {[number, number][]} path CSS pixels @param {DOMRect} map
+   * @param {CanvasRenderingContext2D} context @param {[number, number][]} path CSS pixels @param {HTMLElement} canvas
    */
-  tie(context, path, map) {
-    if (this.root.hidden || !path.length) return;
+  tie(context, path, canvas) {
+    // Also where the note is kept back while the tape is laid.
+    if (this.root.hidden || !path.length || !this.root.offsetWidth) return;
     const box = this.root.getBoundingClientRect();
+    const map = canvas.getBoundingClientRect();
     const below = box.width > 0.8 * map.width;
     const [x, y] = below ? [box.left - map.left + 24, box.top - map.top] : [box.left - map.left + 2, box.top - map.top + 16];
     const near = path.reduce((best, p) => (Math.hypot(p[0] - x, p[1] - y) < Math.hypot(best[0] - x, best[1] - y) ? p : best));

@@ -144,7 +144,7 @@ def inside(
     low, high = np.floor(low / side).astype(int), np.ceil(high / side).astype(int)
     columns, rows = (high - low).tolist()
     share = coverage(np.stack([x / side - low[0], y / side - low[1]], axis=1), rows, columns)
-    if not share.any():
+    if share.sum() < 1e-12:  # rounding
         raise beyond
     pixel = finest * side
     window: dict[str, Any] = {

@@ -1,6 +1,7 @@
 """A build file in, a published atlas out: the rooms one after another.
 
-Everything is written in a folder beside the target and gets its name by one rename. What goes wrong leaves no atlas.
+Everything is written in a folder beside the target and gets its name by one rename. What goes wrong leaves no atlas; a
+build that was stopped is taken up again by the same call.
 """
 
 from __future__ import annotations
@@ -9,8 +10,7 @@ import hashlib
 import json
 import platform
 import shutil
-from collections.abc import Iterator
-from contextlib import contextmanager
+from dataclasses import dataclass
 from datetime import UTC, datetime
 from importlib import metadata
 from os import PathLike
@@ -18,8 +18,9 @@ from pathlib import Path
 from typing import Any
 
 from tilemap import buildfile
+from tilemap.budget import Budget, check_memory, check_scratch, make_budget
 from tilemap.buildfile import BuildFile
-from tilemap.channels import Report
+from tilemap.channels import Report, SpeciesPlan
 from tilemap.cosmology import scale_factor
 from tilemap.draw import SpeciesDrawing
 from tilemap.errors import InputError
@@ -28,16 +29,16 @@ from tilemap.project.camera import Camera
 from tilemap.project.scatter import Plan, make_plan
 from tilemap.pyramid.grid import TILE, level_shapes
 from tilemap.pyramid.publish import FORMAT, check_target, file_sha256, publish
-from tilemap.pyramid.store import create_group
+from tilemap.pyramid.store import create_group, write_whole
 from tilemap.quantities import span
+from tilemap.reading import Reading
 from tilemap.runners.local import LocalRunner
 from tilemap.sheets import plan_species
 from tilemap.sizes import byte_count
 from tilemap.sources import Facts, Source, open_source
+from tilemap.workplace import Workplace, folder_of, workplace
 
 FORMAT_VERSION = 1
-UNFINISHED = "unfinished.part"
-"""Marks the scratch folder of a build; publishing removes it with whatever else ends like this."""
 _REPORTED = ("tilemap", "numpy", "numba", "scipy", "h5py", "astropy", "isal", "duckdb")
 
 
@@ -62,7 +63,8 @@ def build_atlas(
     workers : int, optional
         Threads; default one for each usable core.
     memory : int or str, optional
-        Most memory to use, in bytes or as "4GiB"; a build that needs more is refused before it starts.
+        Most memory to use, in bytes or as "4GiB": particles that do not fit wait on scratch disk, beside `out`. A build
+        that needs more even so is refused before it starts.
     progress : callable, optional
         Called with (phase, done, total) as the work goes on.
 
@@ -81,57 +83,107 @@ def build_atlas(
     if not target.name:
         raise InputError(f"{target} is no name for an atlas: give the folder to make, such as {build.path.stem}.atlas")
     check_target(target)
+    limit = None if memory is None else byte_count(memory)
+    with LocalRunner(workers) as runner:
+        job = _plan(build, runner.workers, limit)
+        check_memory(job.budgets, limit)
+        check_scratch(job.budgets, folder_of(target))
+        with workplace(target, _key(job), datetime.now(UTC).isoformat(timespec="microseconds")) as place:
+            facts = job.source.facts
+            inputs = runner.begin(lambda: _inputs(build, facts))
+            create_group(place.atlas)
+            epoch = _epoch(facts, job.camera)
+            create_group(place.atlas / epoch["name"])
+            view = describe_view(build, job.camera)
+            if build.catalogue is not None:
+                from tilemap.catalogue.ingest import ingest
+
+                epoch["catalogue"] = ingest(build.catalogue, build.folder, view, place.atlas)
+            epoch["sheets"] = _sheets(job, place, epoch["name"], runner, progress)
+            progress("publishing", 0, 1)
+            description = _describe(build, job.camera, job.plan, view, epoch, inputs.result(), place.begun)
+            (place.atlas / "atlas.json").write_text(
+                json.dumps(description, indent=1, allow_nan=False), encoding="utf-8"
+            )
+            published = publish(place.atlas, target)
+            progress("publishing", 1, 1)
+    return published
+
+
+@dataclass(frozen=True)
+class _Job:
+    """One epoch's inputs, and how they are seen and worked on."""
+
+    build: BuildFile
+    source: Source
+    camera: Camera
+    plan: Plan
+    species: list[SpeciesPlan]
+    budgets: list[Budget]
+
+
+def _plan(build: BuildFile, workers: int, limit: int | None) -> _Job:
     source = open_source(build)
     camera = make_camera(build, source.facts)
     level_shapes(camera.rows, camera.columns)
     plan = make_plan(camera.columns, camera.rows, camera.slabs)
     species = plan_species(build, source, camera.pixel)
-    if memory is not None:
-        _check_memory(source, plan, species, byte_count(memory))
-    with _scratch(target) as scratch, LocalRunner(workers) as runner:
-        facts = source.facts
-        inputs = runner.begin(lambda: _inputs(build, facts))
-        create_group(scratch)
-        epoch = _epoch(facts, camera)
-        create_group(scratch / epoch["name"])
-        view = describe_view(build, camera)
-        if build.catalogue is not None:
-            from tilemap.catalogue.ingest import ingest
-
-            epoch["catalogue"] = ingest(build.catalogue, build.folder, view, scratch)
-        in_view = 0
-        for planes in species:
-            drawing = SpeciesDrawing(build, source, camera, plan, planes, runner, progress)
-            records, sums = drawing.read()
-            in_view += records
-            epoch["sheets"] += drawing.write(scratch / epoch["name"], sums)
-        if in_view == 0:
-            raise InputError(f"{build.path}: view: no particle lies in it; {_where(build, camera, facts)}")
-        order = list(build.sheets)
-        epoch["sheets"].sort(key=lambda sheet: order.index(sheet["name"]))
-        progress("publishing", 0, 1)
-        description = _describe(build, camera, plan, view, epoch, inputs.result())
-        (scratch / "atlas.json").write_text(json.dumps(description, indent=1, allow_nan=False), encoding="utf-8")
-        published = publish(scratch, target)
-        progress("publishing", 1, 1)
-    return published
+    budgets = [
+        make_budget(
+            plan,
+            source.count(planes.species),
+            len(planes.quantities),
+            len(planes.fields),
+            workers,
+            limit,
+            build.snapshot.species[planes.species].smoothing.neighbours is not None,
+        )
+        for planes in species
+    ]
+    return _Job(build, source, camera, plan, species, budgets)
 
 
-@contextmanager
-def _scratch(target: Path) -> Iterator[Path]:
-    """A folder beside the target, gone again unless it was published; one that a stopped build left is taken over."""
-    folder = target.with_name(f"{target.name}.part")
-    mark = folder / UNFINISHED
-    if folder.exists():
-        if not mark.exists():
-            raise InputError(f"{folder} is in the way and not left by a build: move it, or name another atlas")
-        shutil.rmtree(folder)
-    folder.mkdir()
-    mark.touch()
-    try:
-        yield folder
-    finally:
-        shutil.rmtree(folder, ignore_errors=True)
+def _key(job: _Job) -> dict[str, Any]:
+    """All that decides the bytes of an atlas, the code apart."""
+    files = [path.stat() for path in job.source.facts.files]
+    return {
+        "build_file": job.build.text,
+        "versions": {name: _version(name) for name in _REPORTED},
+        "inputs": [[stat.st_size, stat.st_mtime_ns] for stat in files],
+        "chunks": [budget.chunk for budget in job.budgets],
+    }
+
+
+def _sheets(job: _Job, place: Workplace, epoch: str, runner: LocalRunner, progress: Report) -> list[dict[str, Any]]:
+    """Make every sheet of an epoch that is not made yet; their entries in atlas.json."""
+    entries: list[dict[str, Any]] = []
+    in_view = 0
+    for planes, budget in zip(job.species, job.budgets, strict=True):
+        work = place.work / epoch / planes.species
+        work.mkdir(parents=True, exist_ok=True)
+        done = work / "sheets.json"
+        if not done.exists():
+            reading = Reading(job.build, job.source, job.camera, job.plan, planes, budget, runner, progress, work)
+            buckets, sums = reading.read()
+            drawing = SpeciesDrawing(job.build, job.plan, planes, buckets, runner, progress, work)
+            made = {"sheets": drawing.write(place.atlas / epoch, sums), "records": int(buckets.runs.counts.sum())}
+            write_whole(done, json.dumps(made, allow_nan=False).encode())
+            _clear(work, done)
+        made = json.loads(done.read_bytes())
+        in_view += made["records"]
+        entries += made["sheets"]
+    if in_view == 0:
+        build = job.build
+        raise InputError(f"{build.path}: view: no particle lies in it; {_where(build, job.camera, job.source.facts)}")
+    order = list(job.build.sheets)
+    return sorted(entries, key=lambda sheet: order.index(sheet["name"]))
+
+
+def _clear(work: Path, done: Path) -> None:
+    """Take away all that is in a folder but one file."""
+    for path in work.iterdir():
+        if path != done:
+            shutil.rmtree(path) if path.is_dir() else path.unlink()
 
 
 def _epoch(facts: Facts, camera: Camera) -> dict[str, Any]:
@@ -159,12 +211,13 @@ def _describe(
     view: dict[str, Any],
     epoch: dict[str, Any],
     inputs: list[dict[str, Any]],
+    begun: str,
 ) -> dict[str, Any]:
     provenance = {
         "build_file": build.text,
         "versions": {"python": platform.python_version()} | {name: _version(name) for name in _REPORTED},
         "inputs": inputs,
-        "built": datetime.now(UTC).isoformat(timespec="microseconds"),
+        "built": begun,
     }
     return {
         "format": FORMAT,
@@ -201,20 +254,3 @@ def _where(build: BuildFile, camera: Camera, facts: Facts) -> str:
     if facts.box is not None:
         text += f", the box is {' x '.join(f'{side:.6g}' for side in facts.box)} {unit}"
     return text
-
-
-def _check_memory(source: Source, plan: Plan, species: list[Any], limit: int) -> None:
-    """Refuse a build that would pass the limit: particles in buckets, coarse images twice, a region for each worker."""
-    worst = 0.0
-    for planes in species:
-        channels = len(planes.quantities)
-        particles = source.count(planes.species) * 4 * (3 + channels) * 1.3
-        stacks = 2 * (plan.slabs + 1) * channels * 4 * plan.size(plan.local)[0] * plan.size(plan.local)[1]
-        regions = 4 * 3 * channels * 4 * plan.region_px**2
-        worst = max(worst, particles + stacks + regions)
-    needed = int(worst * 1.2) + (400 << 20)
-    if needed > limit:
-        raise InputError(
-            f"--memory is {limit / 2**30:.3g} GiB, and this build needs about {needed / 2**30:.3g} GiB: allow that much, "
-            "or ask for fewer pixels or slabs"
-        )

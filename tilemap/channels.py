@@ -154,6 +154,16 @@ class SpeciesPlan:
                 self.shifts[number] = shift
         self._shifted[extensive, averaged] = True
 
+    def state(self) -> dict[str, NDArray]:
+        """What is settled so far, for `take_up`."""
+        shifted = np.array([*self._shifted.values()], dtype=bool)
+        return {"scales": self.scales, "shifts": self.shifts, "settled": self._settled, "shifted": shifted}
+
+    def take_up(self, state: dict[str, NDArray]) -> None:
+        """Settle as an earlier, stopped build did."""
+        self.scales, self.shifts, self._settled = (state[name].copy() for name in ("scales", "shifts", "settled"))
+        self._shifted = dict(zip(self._shifted, state["shifted"].tolist(), strict=True))
+
     def scale(self, sheet: SheetPlan) -> float:
         """What the sheet's `values` have to be multiplied by, besides its factor."""
         below = 1.0 if sheet.weight is None else self.scales[sheet.weight]

@@ -1,12 +1,13 @@
-"""One species from its particles to the tiles of its sheets: read, route, draw region by region, code, halve.
+"""One species from its buckets to the tiles of its sheets: draw region by region, code, halve.
 
-Memory holds the species' particles, its coarse images, and one region for each worker; never an image at level 0.
+Memory holds a coarse image, and one region for each worker; never an image at level 0. What the coarse levels need, and
+which regions are done, is in the scratch folder, so that a build that was stopped goes on where it was.
 """
 
 from __future__ import annotations
 
-import threading
 from collections.abc import Iterator
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
@@ -15,25 +16,53 @@ from numpy.typing import NDArray
 
 from tilemap.buildfile import BuildFile
 from tilemap.channels import Report, SheetPlan, SpeciesPlan
-from tilemap.errors import InputError
-from tilemap.project.camera import Camera
 from tilemap.project.scatter import Buckets, Plan
-from tilemap.project.smoothing import neighbour_radii
+from tilemap.project.splat import MARGIN
 from tilemap.project.stamps import stamps_for
 from tilemap.project.vcycle import Cycle
 from tilemap.pyramid.coding import Coding
-from tilemap.pyramid.grid import TILE
+from tilemap.pyramid.grid import SHARD, TILE
 from tilemap.pyramid.peaks import PeakWriter
 from tilemap.pyramid.reduce import halve, plane_sums
-from tilemap.pyramid.writer import WHOLE, SheetWriter
+from tilemap.pyramid.writer import WHOLE, SheetWriter, WaitingTile
 from tilemap.runners.local import LocalRunner
 from tilemap.sheets import describe_sheet
-from tilemap.sources import Chunk, Source
+from tilemap.spill import ImageFile, load_pack, save_pack
 
-CHUNK = 1 << 20
 PERCENTILES = (1, 5, 25, 50, 75, 95, 99, 99.9)
 SUMMARY_PX = 1024
 """Percentiles are those of the whole at the finest level that has no longer side."""
+
+
+PIXEL_NS, RECORD_NS = 8.0, 100.0
+"""What drawing takes for each pixel of each slab and for each record, about: for progress that goes on evenly."""
+
+
+@dataclass(frozen=True)
+class Unit:
+    """Regions that together fill the finest level's shards: they are done together, or not at all."""
+
+    number: int
+    regions: list[int]
+    rows: range
+    columns: range
+
+    @staticmethod
+    def all_of(plan: Plan) -> list[Unit]:
+        """Every unit of an image; `rows` and `columns` are those of its tiles at the finest level."""
+        side = max(1, SHARD // plan.region_px)
+        down, across = plan.regions
+        tiles = side * plan.region_px // TILE
+        corners = [(i, j) for i in range(0, down, side) for j in range(0, across, side)]
+        return [
+            Unit(
+                number,
+                [r * across + c for r in range(i, min(i + side, down)) for c in range(j, min(j + side, across))],
+                range(i // side * tiles, (i // side + 1) * tiles),
+                range(j // side * tiles, (j // side + 1) * tiles),
+            )
+            for number, (i, j) in enumerate(corners)
+        ]
 
 
 class SpeciesDrawing:
@@ -42,75 +71,40 @@ class SpeciesDrawing:
     Parameters
     ----------
     build : BuildFile
-    source : Source
-    camera : Camera
     plan : Plan
     planes : SpeciesPlan
+        As reading has left it.
+    buckets : Buckets
     runner : LocalRunner
     report : callable
         Called with (phase, done, total).
+    work : Path
+        Scratch folder of the species.
     """
 
     def __init__(
         self,
         build: BuildFile,
-        source: Source,
-        camera: Camera,
         plan: Plan,
         planes: SpeciesPlan,
+        buckets: Buckets,
         runner: LocalRunner,
         report: Report,
+        work: Path,
     ) -> None:
-        self.build, self.source, self.camera, self.plan, self.planes = build, source, camera, plan, planes
+        self.build, self.plan, self.planes, self.buckets, self.work = build, plan, planes, buckets, work
         self.runner, self.report = runner, report
-        self.smoothing = build.snapshot.species[planes.species].smoothing
-        self.buckets = Buckets(camera, plan)
-        self.cycle = Cycle(plan, len(planes.quantities), stamps_for(self.smoothing.kernel))
-        self._lock = threading.Lock()
-
-    def read(self) -> tuple[int, NDArray[np.float64]]:
-        """Read every particle and route it; how many records there are, and the sum of each plane over them."""
-        count, phase = self.source.count(self.planes.species), f"reading {self.planes.species}"
-        records, sums = 0, np.zeros(len(self.planes.quantities))
-        done = 0
-
-        def route(chunk: Chunk) -> tuple[int, NDArray[np.int64], NDArray[np.float32], NDArray[np.float64]]:
-            values, ranges = self.planes.planes(chunk)
-            assert chunk.radius is not None
-            return len(chunk), *self.buckets.route(*self.camera.see(chunk.position, chunk.radius, values)), ranges
-
-        for length, starts, placed, ranges in self.runner.map(route, self._settled_chunks()):
-            self.buckets.add(starts, placed)
-            self.planes.widen(ranges)
-            sums += placed[:, 3:].sum(axis=0, dtype=np.float64)
-            records += len(placed)
-            done += length
-            self.report(phase, done, count)
-        return records, sums * self.planes.scales
-
-    def _settled_chunks(self) -> Iterator[Chunk]:
-        for chunk in self._chunks():
-            self.planes.settle(chunk)
-            yield chunk
-
-    def _chunks(self) -> Iterator[Chunk]:
-        species, fields = self.planes.species, self.planes.fields
-        chunks = self.source.chunks(species, fields, CHUNK)
-        if self.smoothing.neighbours is None:
-            yield from chunks
-            return
-        kept = list(chunks)
-        self.report(f"finding the neighbours of {species}", 0, 1)
-        position = np.concatenate([chunk.position for chunk in kept])
-        box = self.source.facts.box if self.source.facts.periodic else None
-        try:
-            radii = neighbour_radii(position, self.smoothing.neighbours, box, self.runner)
-        except InputError as error:
-            raise InputError(f"snapshot.species.{species}: {error}") from error
-        self.report(f"finding the neighbours of {species}", 1, 1)
-        for chunk in kept:
-            chunk.radius = radii[chunk.start : chunk.start + len(chunk)]
-            yield chunk
+        channels = len(planes.quantities)
+        self.cycle = Cycle(plan, channels, stamps_for(build.snapshot.species[planes.species].smoothing.kernel))
+        rows, columns = plan.size(plan.local)
+        self.bases = ImageFile(work / "bases", (plan.slabs, channels, rows + 2 * MARGIN, columns + 2 * MARGIN))
+        # What the regions leave behind: the image at level `local`, from which the coarser ones are halved.
+        self.stacks = plan.slabs + (plan.slabs > 1)
+        self.coarse = ImageFile(work / "coarse", (self.stacks, channels, rows, columns))
+        self._done, self._all = (
+            0.0,
+            self._cost_of_bases(range(plan.slabs)) + sum(map(self._cost, range(plan.regions[0] * plan.regions[1]))),
+        )
 
     def write(self, folder: Path, sums: NDArray[np.float64]) -> list[dict[str, Any]]:
         """Draw everything that was read and write the species' sheets below `folder`; their entries in atlas.json."""
@@ -121,18 +115,12 @@ class SpeciesDrawing:
             self._writer(sheet, folder, sheet.of_planes(coding, self.planes.scale(sheet)))
             for sheet, coding in zip(sheets, codings, strict=True)
         ]
-        bases = [self.cycle.base(self.buckets, slab, self.runner) for slab in range(plan.slabs)]
-        # What the regions leave behind: the image at level `local`, from which the coarser ones are halved.
-        stacks = plan.slabs + (plan.slabs > 1)
-        coarse = np.zeros((stacks, len(self.planes.quantities), *plan.size(plan.local)), dtype=np.float32)
+        self._advance(0.0)
+        self._draw_bases()
         totals = np.zeros((plan.slabs, len(self.planes.quantities)))
-        count = plan.regions[0] * plan.regions[1]
-        phase = f"drawing {self.planes.species}"
-        self.report(phase, 0, count)
-        work = self.runner.map(lambda region: self._region(region, bases, writers, coarse, totals), range(count))
-        for done, _ in enumerate(work, 1):
-            self.report(phase, done, count)
-        list(self.runner.map(lambda stack: self._coarser(stack, coarse[stack], writers), range(stacks)))
+        for unit in self._draw_units(writers):
+            totals += unit
+        list(self.runner.map(lambda stack: self._coarser(stack, writers), range(self.stacks)))
         entries = []
         for sheet, coding, writer in zip(sheets, codings, writers, strict=True):
             plane_totals = totals[:, sheet.plane] * self.planes.scales[sheet.plane]
@@ -141,36 +129,86 @@ class SpeciesDrawing:
             if isinstance(writer, PeakWriter):
                 entry |= _summary(coding.decode(writer.finish(SUMMARY_PX)).astype(np.float64))
             else:
-                entry |= _summary(self._small(sheet, coarse[-1]))
+                entry |= _summary(self._small(sheet))
             writer.close(entry)
             entries.append(entry)
         return entries
 
     def _writer(self, sheet: SheetPlan, folder: Path, coding: Coding) -> SheetWriter:
-        given = folder / sheet.name, (self.plan.rows, self.plan.columns), self.plan.slabs, coding
-        return PeakWriter(*given, self.plan.local) if sheet.sheet.kind == "peak" else SheetWriter(*given)
-
-    def _region(
-        self,
-        region: int,
-        bases: list[NDArray[np.float32]],
-        writers: list[SheetWriter],
-        coarse: NDArray[np.float32],
-        totals: NDArray[np.float64],
-    ) -> None:
         plan = self.plan
+        given = folder / sheet.name, (plan.rows, plan.columns), plan.slabs, coding
+        if sheet.sheet.kind != "peak":
+            return SheetWriter(*given)
+        coarse = ImageFile(self.work / f"peak {sheet.name}", (plan.slabs, 1, *plan.size(plan.local)), np.uint16)
+        return PeakWriter(*given, coarse, plan.local)
+
+    def _cost(self, region: int) -> float:
+        """Nanoseconds that a region takes, about."""
+        plan = self.plan
+        records = sum(
+            self.buckets.count(region, slab, level) for slab in range(plan.slabs) for level in range(plan.local)
+        )
+        _, size = self.cycle.window(region)
+        pixels = (size[0] - 2 * MARGIN) * (size[1] - 2 * MARGIN) << 2 * plan.local
+        return PIXEL_NS * pixels * self.stacks + RECORD_NS * records
+
+    def _cost_of_bases(self, slabs: range) -> float:
+        levels = range(self.plan.local, self.plan.top + 1)
+        return RECORD_NS * sum(self.buckets.count(-1, slab, level) for slab in slabs for level in levels)
+
+    def _advance(self, cost: float) -> None:
+        """Report progress in pixels, each of which costs the same."""
+        self._done += cost
+        pixels = self.plan.rows * self.plan.columns * self.plan.slabs
+        share = min(1.0, self._done / self._all) if self._all else 1.0
+        self.report(f"drawing {self.planes.species}", round(pixels * share), pixels)
+
+    def _draw_bases(self) -> None:
+        """Draw the images at level `local`, of every slab, into their file."""
+        for slab in range(self.plan.slabs):
+            mark = self.work / f"base-{slab}"
+            if not mark.exists():
+                self.bases.write(slab, (0, 0), self.cycle.base(self.buckets, slab, self.runner))
+                mark.touch()
+            self._advance(self._cost_of_bases(range(slab, slab + 1)))
+
+    def _draw_units(self, writers: list[SheetWriter]) -> Iterator[NDArray[np.float64]]:
+        """The sum of each slab's planes (slabs, planes) over each unit, drawn now or by a build that was stopped."""
+        units = Unit.all_of(self.plan)
+        packs = {unit.number: load_pack(self.work / f"unit-{unit.number:06d}.npz") for unit in units}
+        regions = [region for unit in units if packs[unit.number] is None for region in unit.regions]
+        drawn = self.runner.map(lambda region: self._region(region, writers), regions)
+        for unit in units:
+            pack = packs.pop(unit.number)
+            if pack is not None:
+                _take_up(pack, writers)
+                self._advance(sum(map(self._cost, unit.regions)))
+                yield pack["totals"]
+                continue
+            totals = np.zeros((self.plan.slabs, len(self.planes.quantities)))
+            for region in unit.regions:
+                totals += next(drawn)
+                self._advance(self._cost(region))
+            waiting = [writer.waiting(unit.rows, unit.columns) for writer in writers]
+            save_pack(self.work / f"unit-{unit.number:06d}.npz", totals=totals, **_packed(waiting))
+            yield totals
+
+    def _region(self, region: int, writers: list[SheetWriter]) -> NDArray[np.float64]:
+        """Draw, code and halve a region; the sum of each slab's planes."""
+        plan = self.plan
+        totals = np.zeros((plan.slabs, len(self.planes.quantities)))
+        corner, size = self.cycle.window(region)
         whole: NDArray[np.float32] | None = None
         for slab in range(plan.slabs):
-            image, drawn = self.cycle.region(self.buckets, bases[slab], region, slab)
+            image, drawn = self.cycle.region(self.buckets, self.bases.read(slab, corner, size), region, slab)
             if drawn:
-                sums = plane_sums(image)
-                with self._lock:
-                    totals[slab] += sums
+                totals[slab] = plane_sums(image)
                 if plan.slabs > 1:
                     whole = image.copy() if whole is None else np.add(whole, image, out=whole)
-            self._levels(region, slab, image if drawn else None, image.shape[1:], writers, coarse[slab])
+            self._levels(region, slab, image if drawn else None, image.shape[1:], writers)
         if plan.slabs > 1:
-            self._levels(region, WHOLE, whole, image.shape[1:], writers, coarse[-1])
+            self._levels(region, WHOLE, whole, image.shape[1:], writers)
+        return totals
 
     def _levels(
         self,
@@ -179,7 +217,6 @@ class SpeciesDrawing:
         image: NDArray[np.float32] | None,
         size: tuple[int, ...],
         writers: list[SheetWriter],
-        coarse: NDArray[np.float32],
     ) -> None:
         """Code a region of one slab at the levels below `local`, and leave it at that level in `coarse`."""
         plan = self.plan
@@ -197,23 +234,47 @@ class SpeciesDrawing:
             image = None if image is None else halve(image)
         if image is not None:
             side = plan.region_px >> plan.local
-            coarse[:, row * side : row * side + rows, column * side : column * side + columns] = image
+            self.coarse.write(slab % self.stacks, (row * side, column * side), image)
 
-    def _coarser(self, stack: int, image: NDArray[np.float32], writers: list[SheetWriter]) -> None:
+    def _coarser(self, stack: int, writers: list[SheetWriter]) -> None:
         """Code one stack's image at level `local` and coarser."""
         plan = self.plan
         slab = stack if stack < plan.slabs else WHOLE
+        image = self.coarse.read(stack, (0, 0), plan.size(plan.local))
         for level in range(plan.local, plan.levels):
             for sheet, writer in zip(self.planes.sheets, writers, strict=True):
                 writer.put(level, slab, (0, 0), self.planes.values(sheet, image))
             if level + 1 < plan.levels:
                 image = halve(image)
 
-    def _small(self, sheet: SheetPlan, image: NDArray[np.float32]) -> NDArray[np.float64]:
+    def _small(self, sheet: SheetPlan) -> NDArray[np.float64]:
         """A sheet's values, in its unit, at the finest level from `local` on that is small enough for percentiles."""
+        image = self.coarse.read(self.stacks - 1, (0, 0), self.plan.size(self.plan.local))
         while max(image.shape[1:]) > SUMMARY_PX:
             image = halve(image)
         return self.planes.values(sheet, image).astype(np.float64) * (sheet.factor * self.planes.scale(sheet))
+
+
+def _packed(waiting: list[list[WaitingTile]]) -> dict[str, NDArray]:
+    """Tiles of several sheets as arrays: where each belongs and how long it is (-1 where there is nothing), and all bytes."""
+    rows, parts = [], []
+    for sheet, tiles in enumerate(waiting):
+        for *place, packed in tiles:
+            rows.append((sheet, *place, -1 if packed is None else len(packed)))
+            parts.append(packed or b"")
+    return {
+        "places": np.array(rows, dtype=np.int64).reshape(-1, 6),
+        "bytes": np.frombuffer(b"".join(parts), dtype=np.uint8),
+    }
+
+
+def _take_up(pack: dict[str, NDArray], writers: list[SheetWriter]) -> None:
+    """Give writers the tiles back that `_packed` packed."""
+    data, start = pack["bytes"].tobytes(), 0
+    for sheet, level, slab, row, column, length in pack["places"].tolist():
+        packed = None if length < 0 else data[start : start + length]
+        start += max(length, 0)
+        writers[sheet].take_up([WaitingTile(level, slab, row, column, packed)])
 
 
 def _summary(values: NDArray[np.float64]) -> dict[str, Any]:

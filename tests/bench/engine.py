@@ -123,11 +123,12 @@ class _Loose:
         from tilemap.project.scatter import Buckets
         from tilemap.project.vcycle import Cycle
         from tilemap.runners.local import LocalRunner
+        from tilemap.spill import Runs
 
-        buckets = Buckets(self.camera, self.plan)
+        buckets = Buckets(self.camera, self.plan, Runs(self.plan.buckets, 4))
         for start in range(0, len(self.position), 1 << 19):
             part = slice(start, start + (1 << 19))
-            buckets.add(*buckets.route(self.position[part], self.radius[part], self.values[part]))
+            buckets.runs.add(*buckets.route(self.position[part], self.radius[part], self.values[part]))
         cycle = Cycle(self.plan, 1, _stamps())
         with LocalRunner(1) as runner:
             base = cycle.base(buckets, 0, runner)
@@ -138,7 +139,8 @@ class _Loose:
         side = self.plan.region_px
         for region in range(self.plan.regions[0] * self.plan.regions[1]):
             row, column = divmod(region, self.plan.regions[1])
-            piece, _ = cycle.region(buckets, base, region, 0)
+            (top, left), (high, wide) = cycle.window(region)
+            piece, _ = cycle.region(buckets, base[:, top : top + high, left : left + wide], region, 0)
             image[row * side : (row + 1) * side, column * side : (column + 1) * side] = piece[0]
         return image
 

@@ -12,6 +12,7 @@ from tilemap.project.scatter import Buckets, Plan, make_plan
 from tilemap.project.stamps import stamps_for
 from tilemap.project.vcycle import Cycle
 from tilemap.runners.local import LocalRunner
+from tilemap.spill import Runs
 
 KERNELS = ("cubic", "quartic", "quintic", "wendland-c2", "wendland-c4", "wendland-c6")
 
@@ -84,11 +85,11 @@ def draw(
     values = np.ascontiguousarray(np.broadcast_to(values, (count, 1)) if values.ndim < 2 else values)
     plan: Plan = make_plan(camera.columns, camera.rows, camera.slabs)
     plan = replace(plan, local=plan.local if local is None else local, top=plan.top if top is None else top)
-    buckets = Buckets(camera, plan)
+    buckets = Buckets(camera, plan, Runs(plan.buckets, 3 + values.shape[1]))
     size = chunk or max(count, 1)
     for start in range(0, count, size):
         part = slice(start, start + size)
-        buckets.add(*buckets.route(*camera.see(position[part], radius[part], values[part])))
+        buckets.runs.add(*buckets.route(*camera.see(position[part], radius[part], values[part])))
     cycle = Cycle(plan, values.shape[1], stamps_for(kernel))
     out = np.zeros((plan.slabs, values.shape[1], plan.rows, plan.columns), dtype=np.float32)
     for slab in range(plan.slabs):
@@ -96,6 +97,8 @@ def draw(
             base = cycle.base(buckets, slab, runner)
         for region in range(plan.regions[0] * plan.regions[1]):
             row, column = (index * plan.region_px for index in divmod(region, plan.regions[1]))
-            image, _ = cycle.region(buckets, base, region, slab)
+            (top_row, left), (high, wide) = cycle.window(region)
+            window = base[:, top_row : top_row + high, left : left + wide]
+            image, _ = cycle.region(buckets, window, region, slab)
             out[slab, :, row : row + image.shape[1], column : column + image.shape[2]] = image
     return out

@@ -16,6 +16,7 @@ from tilemap.pyramid.publish import write_checksums
 from tilemap.pyramid.reader import ArrayReader
 from tilemap.pyramid.verify import verify
 from tilemap.pyramid.writer import WHOLE
+from tilemap.spill import ImageFile
 
 PEAK = {"species": "gas", "peak": "mass", "unit": "Msun/kpc2"}
 
@@ -131,7 +132,8 @@ def test_pieces_four_tiles_wide_in_any_order_make_the_pyramid_of_the_whole_image
     values = (10.0 ** rng.uniform(-3, 9, (slabs, *shape)) * (rng.random((slabs, *shape)) > 0.6)).astype(np.float32)
     values[1, :2048, :2048] = 0
     coding = LogCoding(-2.0, 0.002)
-    writer = PeakWriter(tmp_path / "peak", shape, slabs, coding, 2)
+    held = ImageFile(tmp_path / "codes", (slabs, 1, shape[0] // 4, shape[1] // 4), np.uint16)
+    writer = PeakWriter(tmp_path / "peak", shape, slabs, coding, held, 2)
     corners = [(row, column) for row in range(0, shape[0], side) for column in range(0, shape[1], side)]
     for row, column in rng.permutation(corners).tolist():
         for slab in range(slabs):

@@ -7,6 +7,7 @@ or whose pad for interpolation, the kernel touches. Periodic images are particle
 from __future__ import annotations
 
 import math
+from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
@@ -15,6 +16,7 @@ from numpy.typing import NDArray
 
 from tilemap.project.camera import Camera
 from tilemap.project.stamps import LARGE_PX
+from tilemap.spill import Runs
 
 TILE = 512
 PAD = 2
@@ -84,8 +86,9 @@ def make_plan(columns: int, rows: int, slabs: int) -> Plan:
     top = 0
     while all(side % 2 == 0 and side // 2 >= FEWEST_PX for side in (columns >> top, rows >> top)):
         top += 1
-    # Large regions waste less on their margins; small ones keep every core busy and fit its cache.
-    local = min(1 if max(columns, rows) <= 4096 else 2, levels - 1, top)
+    # Large regions waste less on their margins; small ones keep every core busy and fit its cache. Images of level
+    # `local` are in memory whole: 64 MiB at 32768 pixels.
+    local = min(1 + sum(max(columns, rows) > side for side in (4096, 16384, 65536)), levels - 1, top)
     return Plan(columns, rows, slabs, levels, top, local)
 
 
@@ -216,10 +219,12 @@ class Buckets:
     ----------
     camera : Camera
     plan : Plan
+    runs : Runs
+        Where they wait: rows of x, y, radius and the channels, with a key for each bucket.
     """
 
-    def __init__(self, camera: Camera, plan: Plan) -> None:
-        self.plan = plan
+    def __init__(self, camera: Camera, plan: Plan, runs: Runs) -> None:
+        self.plan, self.runs = plan, runs
         period = np.zeros(3) if camera.period is None else np.asarray(camera.period, dtype=np.float64)
         self._fixed = (
             np.array(camera.axes),
@@ -234,7 +239,6 @@ class Buckets:
             plan.top,
             PLACE_BITS - max(0, math.ceil(math.log2((max(plan.columns, plan.rows) >> plan.local) / 3840))),
         )
-        self._parts: list[list[NDArray[np.float32]]] = [[] for _ in range(plan.buckets)]
 
     def route(
         self, position: NDArray[np.float64], radius: NDArray[np.float64], values: NDArray[np.float32]
@@ -264,13 +268,10 @@ class Buckets:
         _sort(whole[:number], found[:number], values, starts[:-1].copy(), records)
         return starts, records
 
-    def add(self, starts: NDArray[np.int64], records: NDArray[np.float32]) -> None:
-        """Take in what `route` returned; the order of calls is the order of drawing."""
-        for key in np.flatnonzero(np.diff(starts)):
-            self._parts[key].append(records[starts[key] : starts[key + 1]])
+    def count(self, region: int, slab: int, level: int) -> int:
+        """Records in a bucket."""
+        return int(self.runs.counts[self.plan.key(region, slab, level)])
 
-    def take(self, region: int, slab: int, level: int) -> list[NDArray[np.float32]]:
-        """Remove and return the records of a bucket, in pieces of float32 (n, 3 + channels); none where it is empty."""
-        key = self.plan.key(region, slab, level)
-        parts, self._parts[key] = self._parts[key], []
-        return parts
+    def groups(self, region: int, slab: int, level: int) -> Iterator[list[NDArray[np.float32]]]:
+        """The records of a bucket, in lists of pieces (n, 3 + channels) to be drawn together."""
+        return self.runs.groups(self.plan.key(region, slab, level))

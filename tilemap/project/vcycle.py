@@ -98,8 +98,6 @@ class Cycle:
             pass
 
     def _draw_into(self, image: NDArray[np.float32], parts: list[NDArray[np.float32]], level: int) -> None:
-        if not parts:
-            return
         records = parts[0] if len(parts) == 1 else np.concatenate(parts)
         scale = 1.0 / (1 << level)
         order, _ = cell_order(records, scale, (image.shape[1] - 2 * MARGIN, image.shape[2] - 2 * MARGIN))
@@ -112,8 +110,6 @@ class Cycle:
         scale = 1.0 / (1 << level)
         size = image.shape[1] - 2 * MARGIN, image.shape[2] - 2 * MARGIN
         sorted_parts = list(runner.map(lambda records: cell_order(records, scale, size), parts))
-        if not parts:
-            return
 
         def draw_bands(bands: range) -> None:
             for band in bands:
@@ -141,10 +137,21 @@ class Cycle:
             finer = self._empty(self.plan.size(level))
             if image is not None:
                 self._refine_into(image, finer, level, runner)
-            self._draw_shared(finer, buckets.take(-1, slab, level), level, runner)
+            for parts in buckets.groups(-1, slab, level):
+                self._draw_shared(finer, parts, level, runner)
             image = finer
         assert image is not None
         return image
+
+    def window(self, region: int) -> tuple[tuple[int, int], tuple[int, int]]:
+        """The part of `base` that a region is made from: its first row and column, and its rows and columns."""
+        tile = self.plan.region_px >> self.plan.local
+        corner = tuple(place * tile for place in divmod(region, self.plan.regions[1]))
+        sides = (
+            min(tile, side - start) + 2 * MARGIN
+            for side, start in zip(self.plan.size(self.plan.local), corner, strict=True)
+        )
+        return corner, tuple(sides)  # type: ignore[return-value]
 
     def region(
         self, buckets: Buckets, base: NDArray[np.float32], region: int, slab: int
@@ -154,7 +161,7 @@ class Cycle:
         Parameters
         ----------
         buckets : Buckets
-        base : what `base` returned for the slab
+        base : float32 (channels, rows, columns), the region's `window` of what `base` returned for the slab
         region : int, row-major
         slab : int
 
@@ -163,25 +170,15 @@ class Cycle:
         image : float32 (channels, rows, columns) at level 0
         drawn : bool, whether there is anything in it
         """
-        plan = self.plan
-        row, column = divmod(region, plan.regions[1])
-        tile = plan.region_px >> plan.local
-        rows, columns = (
-            min(tile, side - start * tile)
-            for side, start in zip(plan.size(plan.local), (row, column), strict=True)
-        )  # fmt: skip
-        image = base[
-            :,
-            row * tile : row * tile + rows + 2 * MARGIN,
-            column * tile : column * tile + columns + 2 * MARGIN,
-        ]
-        records = [buckets.take(region, slab, level) for level in range(plan.local)]
-        if not image.any() and not any(records):
+        plan, image = self.plan, base
+        rows, columns = image.shape[1] - 2 * MARGIN, image.shape[2] - 2 * MARGIN
+        if not image.any() and not any(buckets.count(region, slab, level) for level in range(plan.local)):
             return np.zeros((self.channels, rows << plan.local, columns << plan.local), dtype=np.float32), False
         for level in range(plan.local - 1, -1, -1):
             rows, columns = rows * 2, columns * 2
             finer = self._empty((rows, columns))
             self._refine_into(image, finer, level)
-            self._draw_into(finer, records[level], level)
+            for parts in buckets.groups(region, slab, level):
+                self._draw_into(finer, parts, level)
             image = finer
         return image[:, MARGIN:-MARGIN, MARGIN:-MARGIN], True

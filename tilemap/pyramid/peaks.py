@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from tilemap.pyramid.coding import Coding
 from tilemap.pyramid.grid import TILE
 from tilemap.pyramid.writer import WHOLE, SheetWriter
+from tilemap.spill import ImageFile
 
 Codes = NDArray[np.uint16]
 
@@ -34,14 +35,18 @@ class PeakWriter(SheetWriter):
     Parameters
     ----------
     folder, shape, slabs, coding : as for `SheetWriter`
+    coarse : ImageFile
+        For the codes at level `local`, uint16: (slabs, 1, rows, columns).
     local : int
         Pieces of the finest level are 2^local tiles wide, or what is left of them at the right and lower edge.
     """
 
-    def __init__(self, folder: Path, shape: tuple[int, int], slabs: int, coding: Coding, local: int) -> None:
+    def __init__(
+        self, folder: Path, shape: tuple[int, int], slabs: int, coding: Coding, coarse: ImageFile, local: int
+    ) -> None:
         super().__init__(folder, shape, slabs, coding)
         self._local = local
-        self._coarse = np.zeros((slabs, *self.shapes[local]), dtype=np.uint16)
+        self._coarse = coarse
         self._wholes: dict[tuple[int, int], Codes] = {}
         self._holding = threading.Lock()
 
@@ -69,12 +74,12 @@ class PeakWriter(SheetWriter):
                 codes = highest(codes)
         if codes is not None and slab != WHOLE:
             row, column = (side * TILE >> self._local for side in corner)
-            self._coarse[slab, row : row + codes.shape[0], column : column + codes.shape[1]] = codes
+            self._coarse.write(slab, (row, column), codes[None])
 
     def finish(self, side: int) -> Codes:
         """Write the levels from `local` on; the whole at the finest of them that has no side longer than `side`."""
         for slab in [*range(self.slabs), WHOLE] if self.slabs > 1 else [0]:
-            shown, codes = None, self._coarse.max(axis=0) if slab == WHOLE else self._coarse[slab]
+            shown, codes = None, self._at_local(slab)
             for level in range(self._local, len(self.shapes)):
                 self._put_codes(level, slab, (0, 0), codes)
                 last = level + 1 == len(self.shapes)
@@ -84,3 +89,11 @@ class PeakWriter(SheetWriter):
                     codes = highest(codes)
         assert shown is not None
         return shown
+
+    def _at_local(self, slab: int) -> Codes:
+        if slab != WHOLE:
+            return self._coarse.read(slab, (0, 0), self.shapes[self._local])[0]
+        codes = self._at_local(0)
+        for each in range(1, self.slabs):
+            np.maximum(codes, self._at_local(each), out=codes)
+        return codes

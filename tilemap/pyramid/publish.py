@@ -10,7 +10,7 @@ from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
 
 from tilemap.errors import InputError
-from tilemap.pyramid.store import PART, _write_whole
+from tilemap.pyramid.store import PART, write_whole
 
 FORMAT = "tilemap-atlas"
 CHECKSUMS = "checksums.json"
@@ -37,7 +37,7 @@ def file_sha256(path: str | os.PathLike[str]) -> str:
 def write_checksums(folder: str | os.PathLike[str]) -> None:
     """Write `checksums.json` for all that is in `folder` now."""
     content = json.dumps(checksum_tree(folder), indent=0).encode()
-    _write_whole(Path(folder) / CHECKSUMS, content)
+    write_whole(Path(folder) / CHECKSUMS, content)
 
 
 def is_atlas(folder: str | os.PathLike[str]) -> bool:

@@ -123,16 +123,16 @@ def write_shard(
         return 0
     data = pack_shard(present, grid or ArrayReader(folder).shard_grid)
     path.parent.mkdir(parents=True, exist_ok=True)
-    _write_whole(path, data)
+    write_whole(path, data)
     return len(data)
 
 
 def _write_json(folder: Path, content: Mapping[str, Any]) -> None:
     folder.mkdir(parents=True, exist_ok=True)
-    _write_whole(folder / "zarr.json", json.dumps(content, indent=1, allow_nan=False).encode())
+    write_whole(folder / "zarr.json", json.dumps(content, indent=1, allow_nan=False).encode())
 
 
-def _write_whole(path: Path, data: bytes) -> None:
+def write_whole(path: Path, data: bytes) -> None:
     """Write under another name and rename, so that `path` is never half a file."""
     part = path.with_name(f"{path.name}.{os.getpid()}.{threading.get_ident()}{PART}")
     try:

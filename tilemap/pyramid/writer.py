@@ -3,16 +3,30 @@
 from __future__ import annotations
 
 import threading
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from pathlib import Path
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
 from tilemap.pyramid.coding import Coding
 from tilemap.pyramid.grid import TILE, level_shapes, shard_shape, tile_grid
-from tilemap.pyramid.store import create_array, create_group, pack_tile, write_shard
+from tilemap.pyramid.store import PART, create_array, create_group, pack_tile, write_shard
+
+Shard = tuple[int, int, int, int]
+"""Level, slab, row and column."""
+
+
+class WaitingTile(NamedTuple):
+    """A packed tile, and where it belongs; None where there is nothing."""
+
+    level: int
+    slab: int
+    row: int
+    column: int
+    packed: bytes | None
+
 
 WHOLE = -1
 """In place of a slab's number: the stack of one that holds all slabs together."""
@@ -22,7 +36,7 @@ class SheetWriter:
     """The arrays of one sheet, every level, slabs and whole.
 
     Safe to call from several threads. A shard is written when its last tile has come; until then its packed tiles are
-    kept, so pieces that lie together should come together.
+    kept, so pieces that lie together should come together. Shards that are in the folder already stay as they are.
 
     Parameters
     ----------
@@ -39,8 +53,17 @@ class SheetWriter:
         self.coding = coding
         self.shapes = level_shapes(*shape)
         self._lock = threading.Lock()
-        self._waiting: dict[tuple[int, int, int, int], dict[tuple[int, int], bytes | None]] = {}
+        self._waiting: dict[Shard, dict[tuple[int, int], bytes | None]] = {}
+        self._there = set(self._written())
         self._describe({})
+
+    def _written(self) -> Iterator[Shard]:
+        """The shards that an earlier, stopped build has written."""
+        for stack, whole in ((self.folder, False), (self.folder / "whole", self.slabs > 1)):
+            for path in stack.glob("[0-9]*/c/*/*/*"):
+                if not path.name.endswith(PART):
+                    level, (slab, row, column) = int(path.parts[-5]), map(int, path.parts[-3:])
+                    yield level, WHOLE if whole else slab, row, column
 
     def put(self, level: int, slab: int, corner: tuple[int, int], values: NDArray[np.float32]) -> None:
         """Take in a piece of an image: whole tiles, or what is left of them at the right and lower edge.
@@ -76,6 +99,8 @@ class SheetWriter:
     def _add(self, level: int, slab: int, row: int, column: int, tile: bytes | None) -> None:
         across = tuple(side // TILE for side in shard_shape(self.shapes[level]))
         shard = (level, slab, row // across[0], column // across[1])
+        if shard in self._there:
+            return
         grid = tile_grid(self.shapes[level])
         expected = min(across[0], grid[0] - shard[2] * across[0]) * min(across[1], grid[1] - shard[3] * across[1])
         with self._lock:
@@ -86,6 +111,23 @@ class SheetWriter:
             del self._waiting[shard]
         stack, deep = (self.folder / "whole", 0) if slab == WHOLE and self.slabs > 1 else (self.folder, max(slab, 0))
         write_shard(stack / str(level), (deep, shard[2], shard[3]), tiles, (across[0], across[1]))
+
+    def waiting(self, rows: range, columns: range) -> list[WaitingTile]:
+        """Tiles whose shards are not complete, of those that lie within rows and columns of tiles of the finest level."""
+        with self._lock:
+            found = []
+            for (level, slab, shard_row, shard_column), tiles in self._waiting.items():
+                across = tuple(side // TILE for side in shard_shape(self.shapes[level]))
+                for (i, j), tile in tiles.items():
+                    row, column = shard_row * across[0] + i, shard_column * across[1] + j
+                    if row << level in rows and column << level in columns:
+                        found.append(WaitingTile(level, slab, row, column, tile))
+        return found
+
+    def take_up(self, tiles: Iterable[WaitingTile]) -> None:
+        """Take in what `waiting` gave when an earlier, stopped build wrote here."""
+        for tile in tiles:
+            self._add(*tile)
 
     def close(self, attributes: dict) -> None:
         """Give the sheet its description; every tile must have come."""

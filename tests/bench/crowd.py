@@ -71,16 +71,23 @@ def _lognormal(random: np.random.Generator, cells: int) -> tuple[NDArray[np.floa
     return field, field
 
 
+PIECE = 10_000_000
+"""Particles made at a time; more are several crowds in one box, with radii that shrink as they fill it."""
+
+
 def write_crowd(folder: Path, count: int, pixels: int, slabs: int = 1) -> Path:
     """An HDF5 snapshot of `count` particles and its build file in `folder`; the build file's path."""
     import h5py
 
     if not (folder / "crowd.hdf5").exists():
-        position, radius = crowd(count)
         with h5py.File(folder / "crowd.hdf5", "w") as file:
-            file["gas/position"] = position
+            positions = file.create_dataset("gas/position", (count, 3), np.float64)
+            radii = file.create_dataset("gas/radius", (count,), np.float32)
+            for seed, start in enumerate(range(0, count, PIECE), 7):
+                stop = min(start + PIECE, count)
+                positions[start:stop], radius = crowd(stop - start, seed)
+                radii[start:stop] = radius * ((stop - start) / count) ** (1 / 3)
             file["gas/mass"] = np.full(count, 1e6, dtype=np.float32)
-            file["gas/radius"] = radius.astype(np.float32)
     build = folder / f"crowd-{pixels}-{slabs}.yaml"
     build.write_text(BUILD_FILE.format(side=SIDE_MPC, pixels=pixels, slabs=slabs), encoding="utf-8")
     return build

@@ -23,6 +23,8 @@ BENCHES = {
     "engine/growth": "engine:growth",
     "engine/cores": "engine:cores",
     "engine/tiles": "engine:tiles",
+    "memory/peak_gib": "memory:peak",
+    "memory/spill": "memory:spill",
     "frame/median_ms": "frame:median",
     "frame/p95_ms": "frame:slowest",
     "frame/recolour_ms": "frame:recolour",

@@ -74,5 +74,5 @@ def changed(build: dict, **values: object) -> dict:
         if value is None:
             place.pop(last, None)
         else:
-            place[last] = value
+            place[last] = copy.deepcopy(value)
     return build

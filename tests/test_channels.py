@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from copy import deepcopy
 from pathlib import Path
 
 import numpy as np
@@ -29,7 +28,7 @@ def plans(tmp_path: Path, pixel: float = PIXEL_MPC, **values: object) -> list[Sp
 
 
 def spec(tmp_path: Path, **values: object) -> BuildFile:
-    return loads(yaml.safe_dump(changed(description(), **deepcopy(values)), sort_keys=False), tmp_path / "small.yaml")
+    return loads(yaml.safe_dump(changed(description(), **values), sort_keys=False), tmp_path / "small.yaml")
 
 
 def chunk(count: int = 5, **values: np.ndarray) -> Chunk:

@@ -23,6 +23,7 @@ from tilemap.buildfile import BuildFile
 from tilemap.channels import Report, SpeciesPlan
 from tilemap.cosmology import scale_factor
 from tilemap.draw import SpeciesDrawing
+from tilemap.epochs import check_one_view, epoch_names
 from tilemap.errors import InputError
 from tilemap.layout import describe_view, make_camera
 from tilemap.project.camera import Camera
@@ -85,23 +86,29 @@ def build_atlas(
     check_target(target)
     limit = None if memory is None else byte_count(memory)
     with LocalRunner(workers) as runner:
-        job = _plan(build, runner.workers, limit)
-        check_memory(job.budgets, limit)
-        check_scratch(job.budgets, folder_of(target))
-        with workplace(target, _key(job), datetime.now(UTC).isoformat(timespec="microseconds")) as place:
-            facts = job.source.facts
-            inputs = runner.begin(lambda: _inputs(build, facts))
+        jobs = [_plan(each, runner.workers, limit) for each in build.each_epoch()]
+        names = epoch_names([job.build for job in jobs], [job.source.facts.redshift for job in jobs])
+        check_one_view([job.build for job in jobs], names, [job.camera for job in jobs])
+        budgets = [budget for job in jobs for budget in job.budgets]
+        check_memory(budgets, limit)
+        check_scratch(budgets, folder_of(target))
+        with workplace(target, _key(jobs), datetime.now(UTC).isoformat(timespec="microseconds")) as place:
+            inputs = runner.begin(lambda: [file for job in jobs for file in _inputs(job.build, job.source.facts)])
             create_group(place.atlas)
-            epoch = _epoch(facts, job.camera)
-            create_group(place.atlas / epoch["name"])
-            view = describe_view(build, job.camera)
-            if build.catalogue is not None:
-                from tilemap.catalogue.ingest import ingest
+            view = describe_view(build, jobs[0].camera)
+            epochs = []
+            for name, job in zip(names, jobs, strict=True):
+                create_group(place.atlas / name)
+                epoch = _epoch(name, job.source.facts)
+                if job.build.catalogue is not None:
+                    from tilemap.catalogue.ingest import ingest
 
-                epoch["catalogue"] = ingest(build.catalogue, build.folder, view, place.atlas)
-            epoch["sheets"] = _sheets(job, place, epoch["name"], runner, progress)
+                    folder = "catalogue" if len(jobs) == 1 else f"catalogue/{name}"
+                    epoch["catalogue"] = ingest(job.build.catalogue, build.folder, view, place.atlas, folder)
+                epoch["sheets"] = _sheets(job, place, name, runner, progress)
+                epochs.append(epoch)
             progress("publishing", 0, 1)
-            description = _describe(build, job.camera, job.plan, view, epoch, inputs.result(), place.begun)
+            description = _describe(build, jobs[0].camera, jobs[0].plan, view, epochs, inputs.result(), place.begun)
             (place.atlas / "atlas.json").write_text(
                 json.dumps(description, indent=1, allow_nan=False), encoding="utf-8"
             )
@@ -131,26 +138,26 @@ def _plan(build: BuildFile, workers: int, limit: int | None) -> _Job:
     budgets = [
         make_budget(
             plan,
-            source.count(planes.species),
+            sum(map(source.count, planes.parts)),
             len(planes.quantities),
             len(planes.fields),
             workers,
             limit,
-            build.snapshot.species[planes.species].smoothing.neighbours is not None,
+            any(build.snapshot.species[each].smoothing.neighbours is not None for each in planes.parts),
         )
         for planes in species
     ]
     return _Job(build, source, camera, plan, species, budgets)
 
 
-def _key(job: _Job) -> dict[str, Any]:
+def _key(jobs: list[_Job]) -> dict[str, Any]:
     """All that decides the bytes of an atlas, the code apart."""
-    files = [path.stat() for path in job.source.facts.files]
+    files = [path.stat() for job in jobs for path in job.source.facts.files]
     return {
-        "build_file": job.build.text,
+        "build_file": jobs[0].build.text,
         "versions": {name: _version(name) for name in _REPORTED},
         "inputs": [[stat.st_size, stat.st_mtime_ns] for stat in files],
-        "chunks": [budget.chunk for budget in job.budgets],
+        "chunks": [budget.chunk for job in jobs for budget in job.budgets],
     }
 
 
@@ -186,13 +193,13 @@ def _clear(work: Path, done: Path) -> None:
             shutil.rmtree(path) if path.is_dir() else path.unlink()
 
 
-def _epoch(facts: Facts, camera: Camera) -> dict[str, Any]:
+def _epoch(name: str, facts: Facts) -> dict[str, Any]:
     z, cosmology = facts.redshift, facts.cosmology
     timed = z is not None and cosmology is not None
     # At redshift zero an arcsecond spans nothing.
     seen = timed and z is not None and z > 0
     return {
-        "name": "now" if z is None else f"z{z:.2f}",
+        "name": name,
         "redshift": z,
         "scale_factor": None if z is None else scale_factor(z),
         "age_gyr": cosmology.age_gyr(z) if timed else None,  # type: ignore[union-attr, arg-type]
@@ -209,7 +216,7 @@ def _describe(
     camera: Camera,
     plan: Plan,
     view: dict[str, Any],
-    epoch: dict[str, Any],
+    epochs: list[dict[str, Any]],
     inputs: list[dict[str, Any]],
     begun: str,
 ) -> dict[str, Any]:
@@ -230,7 +237,7 @@ def _describe(
         "pixels": [camera.columns, camera.rows],
         "view": view,
         "slabs": [float(edge) for edge in camera.edges],
-        "epochs": [epoch],
+        "epochs": epochs,
         "provenance": provenance,
     }
 

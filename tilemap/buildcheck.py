@@ -113,22 +113,18 @@ def check_whole(build: BuildFile) -> None:
     for name, sheet in build.sheets.items():
         _check_sheet(build, name, sheet)
     _check_view(build)
+    _check_epochs(build)
 
 
 def _check_sheet(build: BuildFile, name: str, sheet: Sheet) -> None:
-    here = f"sheets.{name}"
-    species = build.snapshot.species.get(sheet.species)
-    if species is None:
-        near = suggestion(sheet.species, build.snapshot.species)
-        raise InputError(f"{here}.species: no species {sheet.species!r} in snapshot.species: {near}")
-    kind = sheet.kind
+    here, kind = f"sheets.{name}", sheet.kind
+    _check_species(build, here, sheet)
+    same = {other: each for other, each in build.sheets.items() if each.label == sheet.label}
     if kind == "dispersion":
-        means = [
-            other for other, each in build.sheets.items() if each.mean is not None and each.species == sheet.species
-        ]
+        means = [other for other, each in same.items() if each.mean is not None]
         if sheet.dispersion not in means:
             what = (
-                "is no sheet" if sheet.dispersion not in build.sheets else f"is not a mean of species {sheet.species!r}"
+                "is no sheet" if sheet.dispersion not in build.sheets else f"is not a mean of species {sheet.label!r}"
             )
             near = suggestion(str(sheet.dispersion), means) if means else "add one, such as mean: velocity"
             raise InputError(f"{here}.dispersion: {sheet.dispersion!r} {what}: {near}")
@@ -137,24 +133,63 @@ def _check_sheet(build: BuildFile, name: str, sheet: Sheet) -> None:
             raise InputError(f"{here}.unit is {sheet.unit}: a dispersion has the unit of its mean sheet, {unit}")
         return
     quantity = str(getattr(sheet, kind))
-    known = [*species.fields, "mass", "count"]
-    if quantity not in known:
-        raise InputError(
-            f"{here}.{kind}: species {sheet.species!r} has no field {quantity!r}: {suggestion(quantity, known)}"
-        )
-    if quantity == "mass" and species.mass is None:
-        raise InputError(
-            f"{here}.{kind}: species {sheet.species!r} has no mass: give snapshot.species.{sheet.species}.mass"
-        )
+    for each in sheet.species:
+        _check_quantity(build, f"{here}.{kind}", each, quantity)
     if kind != "mean":
         return
     if quantity == "count":
         raise InputError(f"{here}.mean: the mean of a count is always one: use sum: count")
-    fitting = [other for other, each in build.sheets.items() if each.sum is not None and each.species == sheet.species]
+    fitting = [other for other, each in same.items() if each.sum is not None]
     if sheet.weight not in fitting:
-        what = "is no sheet" if sheet.weight not in build.sheets else f"is not a sum sheet of species {sheet.species!r}"
-        near = suggestion(str(sheet.weight), fitting) if fitting else f"add one, such as sum: mass of {sheet.species}"
+        what = "is no sheet" if sheet.weight not in build.sheets else f"is not a sum sheet of species {sheet.label!r}"
+        near = suggestion(str(sheet.weight), fitting) if fitting else f"add one, such as sum: mass of {sheet.label}"
         raise InputError(f"{here}.weight: {sheet.weight!r} {what}: {near}")
+
+
+def _check_species(build: BuildFile, here: str, sheet: Sheet) -> None:
+    known = build.snapshot.species
+    if not sheet.species:
+        raise InputError(f"{here}.species: nothing is listed here: give one of {', '.join(known)}, or several")
+    for each in sheet.species:
+        if each not in known:
+            raise InputError(f"{here}.species: no species {each!r} in snapshot.species: {suggestion(each, known)}")
+    if len(set(sheet.species)) < len(sheet.species):
+        raise InputError(f"{here}.species: {sheet.label} names one species twice: name each once")
+    kernels = {known[each].smoothing.kernel for each in sheet.species}
+    if len(kernels) > 1:
+        first, *others = sheet.species
+        other = next(each for each in others if known[each].smoothing.kernel != known[first].smoothing.kernel)
+        raise InputError(
+            f"{here}.species: one sheet is drawn with one kernel, and {first} has {known[first].smoothing.kernel}, {other} "
+            f"{known[other].smoothing.kernel}: write the same, such as snapshot.species.{other}.smoothing.kernel: "
+            f"{known[first].smoothing.kernel}"
+        )
+
+
+def _check_quantity(build: BuildFile, here: str, name: str, quantity: str) -> None:
+    species = build.snapshot.species[name]
+    known = [*species.fields, "mass", "count"]
+    if quantity not in known:
+        raise InputError(f"{here}: species {name!r} has no field {quantity!r}: {suggestion(quantity, known)}")
+    if quantity == "mass" and species.mass is None:
+        raise InputError(f"{here}: species {name!r} has no mass: give snapshot.species.{name}.mass")
+
+
+def _check_epochs(build: BuildFile) -> None:
+    if build.epochs is None:
+        if build.snapshot.files is None:
+            raise InputError(
+                "snapshot.files: this key is missing: name the particle files, or list epochs, each with its own"
+            )
+        return
+    if build.snapshot.files is not None:
+        raise InputError("snapshot.files: the epochs name their files: leave it out here")
+    if build.catalogue is None:
+        for number, epoch in enumerate(build.epochs):
+            if epoch.catalogue is not None:
+                raise InputError(
+                    f"epochs.{number}.catalogue: no section catalogue says what its columns are: add one beside epochs"
+                )
 
 
 def _check_view(build: BuildFile) -> None:

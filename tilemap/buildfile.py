@@ -153,9 +153,9 @@ class CosmologyKeys(_Keys):
 
 
 class Snapshot(_Keys):
-    """The particle files and what they hold."""
+    """The particle files and what they hold; `files` is None where the build file lists epochs, until `each_epoch`."""
 
-    files: Annotated[Texts, pydantic.Field(min_length=1)]
+    files: Annotated[Texts, pydantic.Field(min_length=1)] | None = None
     kind: Literal["hdf5", "arrays", "table"] | None = None
     box: Box | None = None
     periodic: bool | None = None
@@ -217,7 +217,7 @@ class Sheet(_Keys):
     """
 
     title: str | None = None
-    species: str
+    species: Texts
     sum: str | None = None
     mean: str | None = None
     dispersion: str | None = None
@@ -232,6 +232,11 @@ class Sheet(_Keys):
     def kind(self) -> str:
         """Which of the `KINDS` it is."""
         return next(kind for kind in KINDS if getattr(self, kind) is not None)
+
+    @property
+    def label(self) -> str:
+        """Its species in one word: gas, or gas+stars."""
+        return "+".join(self.species)
 
     @property
     def summed(self) -> str | None:
@@ -263,6 +268,15 @@ class Catalogue(_Keys):
     rank: str
 
 
+class Epoch(_Keys):
+    """One of several moments: what is its own; all else is as the rest of the build file says."""
+
+    files: Annotated[Texts, pydantic.Field(min_length=1)]
+    name: Name | None = None
+    redshift: Annotated[float, pydantic.Field(gt=-1)] | None = None
+    catalogue: str | None = None
+
+
 class BuildFile(_Keys):
     """The whole build file, checked; made by :func:`load`."""
 
@@ -272,9 +286,32 @@ class BuildFile(_Keys):
     view: View = View()
     sheets: Annotated[dict[Name, Sheet], pydantic.Field(min_length=1)]
     catalogue: Catalogue | None = None
+    epochs: Annotated[list[Epoch], pydantic.Field(min_length=1)] | None = None
 
     _path: Path = PrivateAttr(default=Path("build.yaml"))
     _text: str = PrivateAttr(default="")
+    _epoch: str | None = PrivateAttr(default=None)
+
+    def each_epoch(self) -> list[BuildFile]:
+        """A build file of one snapshot for each epoch, in the order in which they are listed."""
+        return [self] if self.epochs is None else [self._at(epoch) for epoch in self.epochs]
+
+    def _at(self, epoch: Epoch) -> BuildFile:
+        redshift = self.snapshot.redshift if epoch.redshift is None else epoch.redshift
+        changes: dict[str, Any] = {
+            "epochs": None,
+            "snapshot": self.snapshot.model_copy(update={"files": epoch.files, "redshift": redshift}),
+        }
+        if self.catalogue is not None and epoch.catalogue is not None:
+            changes["catalogue"] = self.catalogue.model_copy(update={"file": epoch.catalogue})
+        copy = self.model_copy(update=changes)
+        copy._epoch = epoch.name
+        return copy
+
+    @property
+    def epoch_name(self) -> str | None:
+        """What the build file calls this epoch; None where it leaves the name to the redshift."""
+        return self._epoch
 
     @property
     def path(self) -> Path:

@@ -94,8 +94,11 @@ class SpeciesPlan:
     Attributes
     ----------
     species : str
+        Its name; the names of several that are drawn together, joined by +.
     quantities : list of Plane
     sheets : list of SheetPlan
+    parts : tuple of str
+        The species that are drawn together; one, mostly.
     ranges : float64 (planes, 2)
         Smallest and largest value of the averaged field, over particles of positive weight, or of the summed one;
         filled while reading. Masses and counts, which are not negative, are left out.
@@ -108,11 +111,13 @@ class SpeciesPlan:
     species: str
     quantities: list[Plane]
     sheets: list[SheetPlan]
+    parts: tuple[str, ...] = ()
     ranges: NDArray[np.float64] = field(default_factory=lambda: np.empty((0, 2)))
     scales: NDArray[np.float64] = field(default_factory=lambda: np.empty(0))
     shifts: NDArray[np.float64] = field(default_factory=lambda: np.empty(0))
 
     def __post_init__(self) -> None:
+        self.parts = self.parts or (self.species,)
         self.shifts = np.zeros(len(self.quantities))
         self._shifted: dict[tuple[str, str | None], bool] = {
             (plane.extensive, plane.averaged): False for plane in self.quantities if plane.squared

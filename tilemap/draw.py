@@ -95,7 +95,9 @@ class SpeciesDrawing:
         self.build, self.plan, self.planes, self.buckets, self.work = build, plan, planes, buckets, work
         self.runner, self.report = runner, report
         channels = len(planes.quantities)
-        self.cycle = Cycle(plan, channels, stamps_for(build.snapshot.species[planes.species].smoothing.kernel))
+        # Species that are drawn together have one kernel.
+        kernel = build.snapshot.species[planes.parts[0]].smoothing.kernel
+        self.cycle = Cycle(plan, channels, stamps_for(kernel))
         rows, columns = plan.size(plan.local)
         self.bases = ImageFile(work / "bases", (plan.slabs, channels, rows + 2 * MARGIN, columns + 2 * MARGIN))
         # What the regions leave behind: the image at level `local`, from which the coarser ones are halved.

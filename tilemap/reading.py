@@ -76,7 +76,7 @@ class Reading:
             sums += note["sums"]
             self.planes.widen(note["ranges"])
             self.planes.take_up(note)
-        count, done, phase = self.source.count(self.planes.species), 0, f"reading {self.planes.species}"
+        count, done, phase = sum(map(self.source.count, self.planes.parts)), 0, f"reading {self.planes.species}"
         self.report(phase, 0, count)
 
         def route(piece: tuple[int, Chunk]) -> tuple[int, tuple[NDArray, NDArray] | None, NDArray[np.float64]]:
@@ -102,12 +102,12 @@ class Reading:
         return buckets, sums * self.planes.scales
 
     def _settled_chunks(self) -> Iterator[tuple[int, Chunk]]:
-        for number, chunk in enumerate(self._chunks()):
+        for number, chunk in enumerate(chunk for species in self.planes.parts for chunk in self._chunks(species)):
             self.planes.settle(chunk)
             yield number, chunk
 
-    def _chunks(self) -> Iterator[Chunk]:
-        species, neighbours = self.planes.species, self.build.snapshot.species[self.planes.species].smoothing.neighbours
+    def _chunks(self, species: str) -> Iterator[Chunk]:
+        neighbours = self.build.snapshot.species[species].smoothing.neighbours
         if neighbours is None:
             yield from self.source.chunks(species, self.planes.fields, self.budget.chunk)
             return
@@ -117,13 +117,18 @@ class Reading:
             yield chunk
 
     def _search(self, species: str, neighbours: int) -> Neighbours:
-        count, phase, done = self.source.count(species), f"finding the neighbours of {species}", self.work / "found.npz"
+        count, phase, done = (
+            self.source.count(species),
+            f"finding the neighbours of {species}",
+            self.work / f"found {species}.npz",
+        )
         box = self.source.facts.box if self.source.facts.periodic else None
-        search = Neighbours(count, neighbours, box, self.budget.chunk, self._fresh)
+        search = Neighbours(count, neighbours, box, self.budget.chunk, lambda *what: self._fresh(species, *what))
         known = load_pack(done)
         if known is not None and not self.budget.held:
             search.take_up(
-                Runs(-(-count // self.budget.chunk), 2, self.work / "radii", np.float64), float(known["smallest"])
+                Runs(-(-count // self.budget.chunk), 2, self.work / f"radii {species}", np.float64),
+                float(known["smallest"]),
             )
             return search
         try:
@@ -132,12 +137,12 @@ class Reading:
             raise InputError(f"snapshot.species.{species}: {error}") from error
         save_pack(done, smallest=np.array(search.smallest))
         if not self.budget.held:
-            shutil.rmtree(self.work / "cells")
+            shutil.rmtree(self.work / f"cells {species}")
         return search
 
-    def _fresh(self, name: str, keys: int, width: int) -> Runs:
+    def _fresh(self, species: str, name: str, keys: int, width: int) -> Runs:
         """Empty runs of float64."""
-        folder = None if self.budget.held else self.work / name
+        folder = None if self.budget.held else self.work / f"{name} {species}"
         if folder is not None:
             shutil.rmtree(folder, ignore_errors=True)
         return Runs(keys, width, folder, np.float64)

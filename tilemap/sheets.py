@@ -14,7 +14,7 @@ from tilemap.sources import Source
 
 
 def plan_species(build: BuildFile, source: Source, pixel: float) -> list[SpeciesPlan]:
-    """One plan for each species that a sheet draws, in the order of the build file.
+    """One plan for each species, or several that sheets draw together, in the order of the build file.
 
     Parameters
     ----------
@@ -29,9 +29,9 @@ def plan_species(build: BuildFile, source: Source, pixel: float) -> list[Species
         Where a sheet's unit does not fit what it projects.
     """
     plans = []
-    names = dict.fromkeys(sheet.species for sheet in build.sheets.values())
-    for species in names:
-        sheets = {name: sheet for name, sheet in build.sheets.items() if sheet.species == species}
+    groups = {sheet.label: sheet.species for sheet in build.sheets.values()}
+    for label, species in groups.items():
+        sheets = {name: sheet for name, sheet in build.sheets.items() if sheet.label == label}
         quantities: list[Plane] = []
 
         def number(plane: Plane, quantities: list[Plane] = quantities) -> int:
@@ -53,7 +53,7 @@ def plan_species(build: BuildFile, source: Source, pixel: float) -> list[Species
             else:
                 square = number(Plane(weighting, averaged, squared=True))
                 made.append(SheetPlan(name, sheet, square, weight, factor, total_unit, mean))
-        plans.append(SpeciesPlan(species, quantities, made))
+        plans.append(SpeciesPlan(label, quantities, made, tuple(species)))
     return plans
 
 
@@ -70,7 +70,13 @@ def weight_of(build: BuildFile, sheet: Sheet) -> str | None:
 def _factor(build: BuildFile, source: Source, name: str, sheet: Sheet, pixel: float) -> tuple[float, str]:
     unit = u.Unit(sheet.unit)
     shown = quantity(build, sheet)
-    plain = source.unit(sheet.species, shown)
+    plain = source.unit(sheet.species[0], shown)
+    for other in sheet.species[1:]:
+        if source.unit(other, shown) != plain:
+            raise InputError(
+                f"{build.path}: sheets.{name}: {shown} is in {plain or 'no unit'} for {sheet.species[0]} and in "
+                f"{source.unit(other, shown) or 'no unit'} for {other}: one sheet has one unit"
+            )
     per = plain
     if sheet.summed is not None:
         side = pixel * u.Unit(build.view.unit)
@@ -86,9 +92,13 @@ def _factor(build: BuildFile, source: Source, name: str, sheet: Sheet, pixel: fl
         area = "kpc2" if not build.view.flat else f"{build.view.unit}2"
         named = str(plain) or "no unit of its own"
         raise InputError(
-            f"{build.path}: sheets.{name}.unit is {sheet.unit}: {shown} of {sheet.species} has {named}, "
+            f"{build.path}: sheets.{name}.unit is {sheet.unit}: {shown} of {sheet.label} has {named}, "
             + (f"so a sum needs one such as {plain / u.Unit(area)}" if sheet.summed else "or one like it: write that, ")
-            + ("" if sheet.summed else f"or say in snapshot.species.{sheet.species}.fields what unit the field is in")
+            + (
+                ""
+                if sheet.summed
+                else f"or say in snapshot.species.{sheet.species[0]}.fields what unit the field is in"
+            )
         ) from None
     return factor, str(plain) if plain != u.dimensionless_unscaled else ""
 
@@ -106,7 +116,7 @@ def describe_sheet(
         "name": plan.name,
         "title": sheet.title or plan.name.replace("_", " ").replace("-", " ").capitalize(),
         "kind": sheet.kind,
-        "species": sheet.species,
+        "species": sheet.label,
         "quantity": quantity(build, sheet),
         "weight": weight_of(build, sheet),
         **more,

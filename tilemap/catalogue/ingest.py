@@ -26,15 +26,17 @@ from tilemap.quantities import unit_named
 if TYPE_CHECKING:
     from tilemap.buildfile import Catalogue
 
-FILE = "catalogue/objects.parquet"
+FILE = "objects.parquet"
 # What this project adds to each row; the frame and the queries use these, never the input's own position columns.
 PLACE = ("tilemap_row", "tilemap_u", "tilemap_v", "tilemap_depth", "tilemap_size")
 ROW_GROUP = 8192  # rows; small groups let a query about a small window skip most of a large file
 ALONG = {"z": (0, 1, 2), "x": (1, 2, 0), "y": (2, 0, 1)}  # (u, v, depth) as columns of (x, y, z)
 
 
-def ingest(catalogue: Catalogue, folder: Path, view: dict[str, Any], out: Path) -> dict[str, Any]:
-    """Write ``out/catalogue/objects.parquet`` and describe it.
+def ingest(
+    catalogue: Catalogue, folder: Path, view: dict[str, Any], out: Path, place: str = "catalogue"
+) -> dict[str, Any]:
+    """Write ``objects.parquet`` into a folder of an atlas and describe it.
 
     Parameters
     ----------
@@ -47,6 +49,8 @@ def ingest(catalogue: Catalogue, folder: Path, view: dict[str, Any], out: Path) 
         ``depth`` ranges in ``unit``, ``periodic``, ``box``.
     out
         The atlas folder being built.
+    place
+        The folder in it; each epoch of several needs its own.
 
     Returns
     -------
@@ -106,9 +110,10 @@ def ingest(catalogue: Catalogue, folder: Path, view: dict[str, Any], out: Path) 
     renamed = {each.name: new.name for each, new in zip(columns, kept, strict=True)}
     numbers = (rows[order], u[order], v[order], depth[order], size[source])
     placed = [Column(name, values, "") for name, values in zip(PLACE, numbers, strict=True)]
-    _write(Path(out) / FILE, placed + kept)
+    file = f"{place}/{FILE}"
+    _write(Path(out) / file, placed + kept)
     return {
-        "file": FILE,
+        "file": file,
         "count": len(source),
         "outside": len(places[0]) - len(np.unique(source)),
         "id": renamed[catalogue.id] if catalogue.id else None,

@@ -25,6 +25,8 @@ def open_source(build: BuildFile) -> Source:
         One line: files that are missing or damaged, datasets that are not there, units that are missing or wrong.
     """
     snapshot = build.snapshot
+    if snapshot.files is None:
+        raise InputError(f"{build.path}: it has several epochs: open one of BuildFile.each_epoch()")
     files = find_files(snapshot.files, build.folder)
     kinds = {snapshot.kind or kind_of(path) for path in files}
     if len(kinds) > 1:

@@ -68,6 +68,21 @@ def test_the_whole_is_what_the_slabs_read_together_are(atlas):
     assert whole[moving] == pytest.approx(expected[moving], rel=4e-3)
 
 
+def test_where_all_move_alike_there_is_no_dispersion_above_the_floor(tmp_path):
+    # Half of the box moves at 500 km/s one way, half the other way: wherever one is not mixed with the other, nothing
+    # is left but rounding, however many particles overlap.
+    rng = np.random.default_rng(6)
+    arrays = particles(100_000)
+    arrays["radius"] = 10 ** rng.uniform(-3, -0.5, 100_000)
+    arrays["velocity"] = np.where(arrays["position"][:, 0] < 4, -500.0, 500.0)
+    build = changed(description(), view__slabs=1, sheets__spread=SPREAD)
+    atlas = tilemap.open(build_atlas(write_build(tmp_path, build, arrays), tmp_path / "small.atlas"))
+    # Kernels reach 0.32 Mpc; the two halves also meet at the edge of the periodic box.
+    values = atlas.read("spread", (2, 4), 3.2, 7.9).values
+    assert atlas.sheet("spread")["floor"] == pytest.approx(1.0, rel=0.01)
+    assert np.nanmax(values) < 1.0
+
+
 def test_coarser_pixels_hold_the_spread_of_the_finer_ones(atlas):
     gas, mean, spread = (atlas.read(name, slabs=1).values.astype(np.float64) for name in ("gas", "velocity", "spread"))
     blocks = [np.nan_to_num(each).reshape(512, 2, 512, 2) for each in (gas, mean, spread)]

@@ -1,6 +1,7 @@
 // Two sheets in one picture. "hue": brightness from the first, hue from the second. "above": the second as light laid over
 // the first. In: how, the tones and codings of both. Out: a palette, and the key that says what its colours mean.
 
+import { CODES } from './coding.js';
 import { lut, pack, steps } from './lut.js';
 import { encoded, GROUND, light, lightness, linear, ramp, STEPS } from './ramps.js';
 
@@ -36,10 +37,9 @@ const made = new Map();
 export function palette({ how, tones }, codings) {
   if (!how || tones.length < 2) return lut(tones[0], codings[0]);
   const { table, across, rowOf, columnOf } = colours(how, tones);
-  const rowBy = Uint32Array.from({ length: STEPS }, (_, i) => across * rowOf(i));
-  const columnBy = Uint16Array.from({ length: STEPS }, (_, i) => columnOf(i));
-  const rows = Uint32Array.from(steps(tones[0], codings[0]), (i) => rowBy[i]);
-  const columns = Uint16Array.from(steps(tones[1], codings[1]), (i) => columnBy[i]);
+  const [rows, columns] = [new Uint32Array(CODES), new Uint16Array(CODES)];
+  steps(tones[0], codings[0]).forEach((k, code) => (rows[code] = across * rowOf(k)));
+  steps(tones[1], codings[1]).forEach((k, code) => (columns[code] = columnOf(k)));
   rows[0] = columns[0] = 0;
   return { table, rows, columns };
 }

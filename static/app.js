@@ -1,7 +1,7 @@
 // The frame: puts map, edges, markers and reading together. In: the atlas beside the document and the link in its address.
 // Out: a view that a hand can move, and a link that brings it back.
 
-import { Atlas, Layer } from './atlas.js';
+import { Atlas } from './atlas.js';
 import { CensusEdge, NONE } from './census.js';
 import { DepthEdge } from './depth.js';
 import { Divider } from './divider.js';
@@ -10,6 +10,7 @@ import { folding } from './folding.js';
 import { listen } from './gestures.js';
 import { PixelGrid } from './grid.js';
 import { keyboard, keysNote } from './keys.js';
+import { Layers } from './layers.js';
 import { read } from './link.js';
 import { Linking } from './linking.js';
 import { Looks } from './looks.js';
@@ -22,7 +23,6 @@ import { Reading } from './reading.js';
 import { Rulers } from './rulers.js';
 import { ScaleEdge } from './scale.js';
 import { Sheets } from './sheets.js';
-import { mateOf, sheetOf } from './side.js';
 import { State } from './state.js';
 import { Status } from './status.js';
 import { Tape } from './tape.js';
@@ -47,9 +47,8 @@ export class Frame {
     /** @type {View|null} the view that tiles were asked ahead for */ this.aheadFor = null;
     this.timers = { tiles: 0, counts: 0, ahead: 0 };
     this.asked = { tiles: 0, counts: 0 };
-    /** @type {Map<string, Layer>} */
-    this.layers = new Map();
     this.state = new State(atlas, (changed) => this.stateChanged(changed));
+    this.layers = new Layers(this.state);
     this.tiles = new Tiles({
       arrived: (tile) => this.tileArrived(tile),
       trouble: (kind) => status.say(say(`trouble_${kind}`), { kind: 'server', stay: kind === 'server' ? 0 : 8000 }),
@@ -69,7 +68,7 @@ export class Frame {
     this.grid = new PixelGrid(this.map, () => this.wake());
     this.tone = new ToneEdge(at('tone'), this.state);
     this.scale = new ScaleEdge(at('scale'), this.state, () => this.motion);
-    this.depth = new DepthEdge(at('depth'), at('depth-corner'), this.state);
+    this.depth = new DepthEdge(at('depth'), at('depth-corner'), this.state, () => this.hand.getAttribute('aria-busy') === 'false');
     this.census = new CensusEdge(at('census'), at('census-corner'), this.state);
     const measure = () => this.scale.measure;
     this.reading = new Reading(at('reading'), this.state, this.map, {
@@ -117,19 +116,11 @@ export class Frame {
 
   // What is shown ------------------------------------------------------------------------------------------------
 
-  /** The layer of a side. @param {import('./side.js').Side} side */
-  layerOf(side) {
-    const layer = new Layer(side.atlas, side.epoch, sheetOf(side), this.state.slabsFor(side.atlas), mateOf(side), side.how);
-    const known = this.layers.get(layer.id) ?? layer;
-    this.layers.set(layer.id, known);
-    return known;
-  }
-
   /** @param {Set<string>} changed */
   stateChanged(changed) {
     if (!this.motion || !this.sheets) return;
     const { state } = this;
-    this.map.show(state.sides.map((side) => ({ layer: this.layerOf(side), paint: state.paintOf(side) })), state.divide, state.held);
+    this.map.show(this.layers.shown, state.divide, state.held);
     this.sheets.draw();
     this.divider.draw();
     if (['sides', 'held', 'atlas', 'epoch'].some((key) => changed.has(key))) this.sideChanged();
@@ -217,7 +208,7 @@ export class Frame {
       this.aheadFor = null;
       this.timers.tiles = 0;
       this.asked.tiles = performance.now();
-      this.map.ask(this.motion.view);
+      this.map.ask(this.motion.view, false, this.depth.playing ? this.layers.through(this.depth.following) : []);
       this.wake();
     };
     if (wait <= 0) ask();
@@ -320,6 +311,7 @@ export class Frame {
   }
 
   putAway() {
+    this.depth.stop();
     if (this.tape.taken) return this.tape.down();
     if (!this.keysShown && !this.state.object) this.tape.away();
     this.keysShown = false;

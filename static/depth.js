@@ -1,5 +1,5 @@
 // The bottom edge: mass per slab along the line of sight, and a window on it that opens, closes and slides by whole slabs.
-// In: state. Out: a new window.
+// In: state, whether the map is at rest. Out: a new window, again and again while it plays.
 
 import { slabTotals } from './atlas.js';
 import { dress, make, svg } from './dom.js';
@@ -7,10 +7,18 @@ import { handle } from './handle.js';
 import { number, quantity } from './units.js';
 import { say } from './words.js';
 
+/** While it plays, a window is shown at least this long, ms. */
+const STEP = 700;
+
 export class DepthEdge {
-  /** @param {HTMLElement} root @param {HTMLElement} corner where the window is put in words @param {import('./state.js').State} state */
-  constructor(root, corner, state) {
+  /**
+   * @param {HTMLElement} root @param {HTMLElement} corner where the window is put in words
+   * @param {import('./state.js').State} state @param {() => boolean} atRest
+   */
+  constructor(root, corner, state, atRest) {
     this.state = state;
+    this.atRest = atRest;
+    /** timer of the next step; 0 while nothing plays */ this.playing = 0;
     root.setAttribute('aria-label', say('depth'));
     this.field = make('div.field');
     this.plot = svg('svg', { 'aria-hidden': 'true' });
@@ -31,8 +39,11 @@ export class DepthEdge {
     this.far = part('depth_far', (x) => this.open(null, this.edgeAt(x)), (n) => this.open(null, this.state.slabs[1] + n));
     this.text = make('div.text', { role: 'status' });
     this.all = make('button.word.act', { type: 'button', title: say('depth_whole_title'), click: () => this.whole() }, say('depth_whole'));
-    corner.append(this.text, this.all);
+    this.play = make('button.word.act', { type: 'button', title: say('depth_play_title'), click: () => this.turnPlay() });
+    corner.append(this.text, make('div.words', {}, this.all, this.play));
     root.append(this.field);
+    // A hand on the window takes it over.
+    this.field.addEventListener('pointerdown', () => this.stop(), { capture: true });
     this.field.addEventListener('pointerdown', (event) => {
       if (event.target !== this.field && event.target !== this.plot && !this.plot.contains(/** @type {Node} */ (event.target))) return;
       this.slide(this.slabAt(event.clientX - this.field.getBoundingClientRect().left) - this.state.slabs[0]);
@@ -89,7 +100,39 @@ export class DepthEdge {
   }
 
   whole() {
+    this.stop();
     this.set([0, this.state.atlas.slabs]);
+  }
+
+  /** The window a step further on, from the far end to the near one; from the whole depth, the nearest slab. @returns {[number, number]} */
+  get following() {
+    const { atlas, slabs: [a, b], wholeDepth } = this.state;
+    if (wholeDepth) return [0, 1];
+    return b < atlas.slabs ? [a + 1, b + 1] : [0, b - a];
+  }
+
+  /** Plays or stops. */
+  turnPlay() {
+    if (this.playing) return this.stop();
+    this.step();
+  }
+
+  /** One step, and the next when everyone has had time to look at it and the map has all of it. */
+  step() {
+    if (this.state.atlas.slabs < 2) return;
+    this.playing = window.setTimeout(() => (this.atRest() ? this.step() : this.wait()), STEP);
+    this.set(this.following);
+    this.draw();
+  }
+
+  wait() {
+    this.playing = window.setTimeout(() => (this.atRest() ? this.step() : this.wait()), 50);
+  }
+
+  stop() {
+    clearTimeout(this.playing);
+    this.playing = 0;
+    this.draw();
   }
 
   /** @param {[number, number]} slabs */
@@ -159,6 +202,8 @@ export class DepthEdge {
     this.slider.place(x0, 0, { now: edges[slabs[0]], ...limits, text: this.text.textContent ?? '' });
     this.slider.root.style.width = `${x1 - x0}px`;
     dress(this.all, { hidden: wholeDepth });
+    dress(this.play, { hidden: atlas.slabs < 2, 'aria-pressed': String(this.playing !== 0) });
+    this.play.textContent = say(this.playing ? 'depth_stop' : 'depth_play');
   }
 
   /** The window in words. @param {number[]} totals @param {string} unit */

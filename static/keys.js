@@ -45,6 +45,7 @@ export function keyboard(frame) {
     '{': () => frame.depth.widen(-1),
     '}': () => frame.depth.widen(1),
     '\\': () => frame.depth.whole(),
+    w: () => frame.depth.turnPlay(),
     n: () => frame.markers.walk(1, frame.motion.view),
     p: () => frame.markers.walk(-1, frame.motion.view),
     g: () => frame.markers.chosen && frame.goTo(frame.markers.chosen),

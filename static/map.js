@@ -65,10 +65,13 @@ export class MapSurface {
   /**
    * Tells the tile store what this view needs, nearest to the middle first.
    * @param {View} view @param {boolean} [ahead] also what a next step would need
+   * @param {import('./atlas.js').Layer[]} [following] a layer for each pane that is to be shown next
    */
-  ask(view, ahead = false) {
-    const needs = this.panes.map((pane) => pane.needs(view, ahead));
-    const luts = new Map(this.panes.flatMap(({ wanted }) => (wanted ? [[wanted.layer.id, wanted.lut]] : [])));
+  ask(view, ahead = false, following = []) {
+    const needs = this.panes.map((pane, i) => pane.needs(view, ahead, following[i]));
+    /** @type {Map<string, number>} */ const luts = new Map();
+    this.panes.forEach(({ wanted }, i) => wanted && following[i] && luts.set(following[i].id, wanted.lut));
+    this.panes.forEach(({ wanted }) => wanted && luts.set(wanted.layer.id, wanted.lut));
     const turns = (/** @type {import('./tiles.js').Place[][]} */ [one, two = []]) => {
       const list = [];
       for (let i = 0; i < Math.max(one.length, two.length); i++) list.push(...one.slice(i, i + 1), ...two.slice(i, i + 1));

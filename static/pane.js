@@ -149,10 +149,10 @@ export class Pane {
   /**
    * The tiles that this view needs, nearest to the middle first, and those that a next step would need: the tiles around, and
    * the next coarser ones; under a divider all of the view.
-   * @param {View} view @param {boolean} ahead
+   * @param {View} view @param {boolean} ahead @param {Layer} [following] that is to be shown next
    * @returns {{needed: Place[], more: Place[]}}
    */
-  needs(view, ahead) {
+  needs(view, ahead, following) {
     const plate = this.wanted;
     if (!plate) return { needed: [], more: [] };
     const { layer } = plate;
@@ -170,6 +170,8 @@ export class Pane {
       more.push(...places(layer, level, around, view));
       if (level + 1 < layer.atlas.levels) more.unshift(...places(layer, level + 1, layer.atlas.range(level + 1, view.bounds), view));
     }
+    // In the colours of today, which are right where its codes mean the same.
+    if (following && JSON.stringify(following.coding) === JSON.stringify(layer.coding)) more.push(...places(following, level, range, view));
     return { needed, more };
   }
 

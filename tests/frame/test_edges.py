@@ -111,6 +111,43 @@ def test_the_depth_window_slides_as_one(screen):
     assert (round(low, 3), round(high, 3)) == (66.667, 100)
 
 
+def test_the_depth_window_plays_slab_by_slab_and_begins_again(screen):
+    place = "#u=50&v=37&width=60&sheet=gas&tone=1e4:1e8&markers=off"
+    screen.go(place)
+    screen.page.get_by_role("button", name="play").click()
+    seen = {}
+    order = []
+    while len(order) < 5:
+        screen.settle()
+        depth = screen.link()["depth"]
+        if not order or order[-1] != depth:
+            order.append(depth)
+            seen[depth] = screen.pixels()
+    screen.page.get_by_role("button", name="stop").click()
+    screen.settle()
+    third = 100 / 3
+    firsts = [round(float(depth.split(":")[0]) / third) for depth in order]
+    assert firsts == [(firsts[0] + step) % 3 for step in range(5)] and firsts[0] == 0
+    rest = screen.link()["depth"]
+    screen.page.wait_for_timeout(1200)
+    assert screen.link()["depth"] == rest
+    for depth, picture in seen.items():
+        screen.go(f"{place}&depth={depth}")
+        assert (screen.pixels() == picture).all(), depth
+
+
+def test_a_window_plays_as_wide_as_it_is_and_stops_under_a_hand(screen):
+    screen.go("#u=50&v=37&width=60&depth=0:66.6667")
+    screen.page.keyboard.press("w")
+    screen.page.wait_for_function("() => location.hash.includes('depth=33.3')")
+    x, y = handle(screen, "Depth window")
+    screen.page.mouse.click(x, y)
+    screen.settle()
+    assert screen.page.get_by_role("button", name="play").count() == 1
+    low, high = map(float, screen.link()["depth"].split(":"))
+    assert high - low == pytest.approx(66.667, abs=1e-3)
+
+
 def test_the_thumb_of_the_ladder_sets_the_width_in_view(screen):
     screen.go("#u=50&v=37&width=60")
     x, y = handle(screen, "Width in view")

@@ -26,7 +26,9 @@ def point(screen, u, v):
         ("gas", "", None),
         ("gas", "33.34:66.67", 1),
         ("gas", "0:66.67", slice(0, 2)),
+        ("gas", "33.34:100", slice(1, 3)),
         ("temperature", "", None),
+        ("temperature", "66.67:100", 2),
         ("temperature", "0:66.67", slice(0, 2)),
     ],
 )

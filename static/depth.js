@@ -202,7 +202,7 @@ export class DepthEdge {
     this.slider.place(x0, 0, { now: edges[slabs[0]], ...limits, text: this.text.textContent ?? '' });
     this.slider.root.style.width = `${x1 - x0}px`;
     dress(this.all, { hidden: wholeDepth });
-    dress(this.play, { hidden: atlas.slabs < 2, 'aria-pressed': String(this.playing !== 0) });
+    dress(this.play, { hidden: atlas.slabs < 2 });
     this.play.textContent = say(this.playing ? 'depth_stop' : 'depth_play');
   }
 
@@ -212,7 +212,7 @@ export class DepthEdge {
     const axis = atlas.view.axes?.[2] ?? '';
     const sum = (/** @type {number[]} */ list) => list.reduce((a, b) => a + b, 0);
     const [inside, all] = [sum(totals.slice(...slabs)), sum(totals)];
-    const where = say('depth_reading', { axis, a: number(this.edges[slabs[0]], 4), b: number(this.edges[slabs[1]], 4), unit: atlas.view.unit });
+    const where = say('depth_reading', { axis, a: number(this.edges[slabs[0]], 3), b: number(this.edges[slabs[1]], 3), unit: atlas.view.unit });
     const total = sheet.kind === 'mean' && !sheet.weight ? '' : quantity(inside, unit, 3);
     const share = all > 0 ? say('depth_share', { share: number((100 * inside) / all, 3) }) : '';
     this.text.replaceChildren(make('div', {}, where), make('div.dim', {}, wholeDepth ? total : share));

@@ -42,6 +42,8 @@ export class Divider {
     names.update(texts.map((text, i) => ({ value: String(i), text })), String(state.held));
     const x = state.divide * this.map.clientWidth;
     grip.place(x, 0, { now: Math.round(100 * state.divide), min: 0, max: 100, text: say('divider_text', { share: Math.round(100 * state.divide), left: texts[0], right: texts[1] }) });
+    // Where a side is narrow its name is cut short.
+    [x, this.map.clientWidth - x].forEach((room, i) => (/** @type {HTMLElement} */ (names.root.children[i]).style.maxWidth = `${Math.max(room - 1, 0)}px`));
     names.root.style.transform = `translateX(${x.toFixed(2)}px)`;
   }
 

@@ -1,5 +1,5 @@
-// The other atlases of the same server that can stand beside this one: those that show the same kind of view, so that a place
-// is the same place in both. In: the list beside the atlas. Out: their names, and the atlases, opened when asked for.
+// The other atlases of the same server that can stand beside this one: those that look at the same volume the same way, so
+// that a place is the same place in both. In: the list beside the atlas. Out: their names, and the atlases, opened when asked for.
 
 import { Atlas } from './atlas.js';
 
@@ -17,7 +17,7 @@ export class Neighbours {
   async look() {
     const { id, view } = this.home;
     const all = await fetch('../atlases.json').then((answer) => (answer.ok ? answer.json() : []), () => []);
-    const alike = (/** @type {any} */ a) => a.id !== id && ['unit', 'coordinates', 'axes'].every((key) => String(a.view[key]) === String(view[key]));
+    const alike = (/** @type {any} */ a) => a.id !== id && ['unit', 'coordinates', 'axes', 'box'].every((key) => String(a.view[key]) === String(view[key]));
     this.list = all.filter(alike).map((/** @type {Neighbour} */ { name, title }) => ({ name, title: title || name }));
     // Runs of one volume may have one title: then the name tells them apart.
     const titles = [this.home.title, ...this.list.map(({ title }) => title)];

@@ -20,7 +20,7 @@ export class Sheets {
     this.how = pick(say('how'), (how) => state.set({ how: /** @type {How} */ (how) }));
     this.mate = pick(say('mate'), (mateName) => state.set({ mateName }));
     this.atlas = pick(say('beside_atlas'), (name) => this.take(name));
-    this.divide = make('button.word.act', { type: 'button', click: () => state.turnDivider() });
+    this.divide = make('button.word.act', { type: 'button', title: say('divide_title'), click: () => state.turnDivider() });
     this.clause = make('div.clause', {}, this.narrow.root, this.how.root, this.mate.root, this.atlas.root, this.divide);
     root.append(this.first.root, this.clause);
   }
@@ -47,7 +47,6 @@ export class Sheets {
     dress(this.how.root, { hidden: sheets.length < 2 });
     dress(this.mate.root, { hidden: !state.mate });
     dress(this.atlas.root, { hidden: !state.held || others.length < 2 });
-    dress(this.divide, { hidden: false, 'aria-pressed': String(state.divided), title: say('divide_title') });
     this.divide.textContent = say(state.divided ? 'divide_end' : 'divide');
   }
 }

@@ -76,7 +76,7 @@ const WORDS = /** @satisfies {Record<string, Told>} */ ({
   depth_near: ['Near end of the depth window', 'Nahes Ende des Tiefenfensters'],
   depth_far: ['Far end of the depth window', 'Fernes Ende des Tiefenfensters'],
   depth_slide: ['Depth window', 'Tiefenfenster'],
-  depth_whole: ['whole depth', 'ganze Tiefe'],
+  depth_whole: ['whole', 'alles'],
   depth_play: ['play', 'abspielen'],
   depth_stop: ['stop', 'anhalten'],
   depth_play_title: ['Slide the window through the depth (w)', 'Das Fenster durch die Tiefe schieben (w)'],

@@ -334,3 +334,20 @@ def test_the_description_is_plain_json(atlas):
     text = (atlas.path / "atlas.json").read_text()
     assert "NaN" not in text and "Infinity" not in text
     assert json.loads(text)["format"] == "tilemap-atlas"
+
+
+def test_a_dry_run_says_what_a_build_would_take_and_does_nothing(tmp_path, capsys):
+    build = write_build(tmp_path)
+    assert main(["build", str(build), "--dry-run", "--memory", "4GiB"]) == 0
+    said = dict(line.split(maxsplit=1) for line in capsys.readouterr().out.splitlines())
+    assert said["particles"] == "600 of gas"
+    assert said["pixels"] == "512 x 512, 2 slabs, 1 level"
+    assert said["sheets"] == "3"
+    assert float(said["memory"].split()[0]) < 4
+    assert set(said) == {"particles", "pixels", "sheets", "memory", "scratch", "atlas", "time"}
+    assert left(tmp_path) == set()
+
+
+def test_a_build_without_a_place_for_the_atlas_is_refused_in_one_line(tmp_path, capsys):
+    assert main(["build", str(write_build(tmp_path))]) == 2
+    assert "--out ATLAS" in capsys.readouterr().err

@@ -54,7 +54,14 @@ def chunk_size(limit: int | None) -> int:
 
 
 def make_budget(
-    plan: Plan, particles: int, channels: int, fields: int, workers: int, limit: int | None, neighbours: bool
+    plan: Plan,
+    particles: int,
+    channels: int,
+    fields: int,
+    workers: int,
+    limit: int | None,
+    chunk: int,
+    neighbours: bool,
 ) -> Budget:
     """Settle how one species is worked on.
 
@@ -66,10 +73,12 @@ def make_budget(
     workers : int
     limit : int or None
         Most memory, in bytes; None where there is no limit.
+    chunk : int
+        Particles to read at a time.
     neighbours : bool
         Whether support radii have to be found.
     """
-    chunk = min(chunk_size(limit), max(particles, 1))
+    chunk = min(chunk, max(particles, 1))
     row = 4 * (3 + channels)
     records = int(particles * SPREAD) * row
     reading = (workers + 2) * chunk * (ROW_BYTES + FIELD_BYTES * fields + row)

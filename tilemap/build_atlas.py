@@ -18,7 +18,7 @@ from pathlib import Path
 from typing import Any
 
 from tilemap import buildfile
-from tilemap.budget import Budget, check_memory, check_scratch, make_budget
+from tilemap.budget import Budget, check_memory, check_scratch, chunk_size, make_budget
 from tilemap.buildfile import BuildFile
 from tilemap.channels import Report, SpeciesPlan
 from tilemap.cosmology import scale_factor
@@ -33,9 +33,9 @@ from tilemap.pyramid.publish import FORMAT, check_target, file_sha256, publish
 from tilemap.pyramid.store import create_group, write_whole
 from tilemap.quantities import span
 from tilemap.reading import Reading
-from tilemap.runners.local import LocalRunner
+from tilemap.runners.local import LocalRunner, usable_cores
 from tilemap.sheets import plan_species
-from tilemap.sizes import byte_count
+from tilemap.sizes import byte_count, half_of_free
 from tilemap.sources import Facts, Source, open_source
 from tilemap.workplace import Workplace, folder_of, workplace
 
@@ -64,7 +64,7 @@ def build_atlas(
     workers : int, optional
         Threads; default one for each usable core.
     memory : int or str, optional
-        Most memory to use, in bytes or as "4GiB": particles that do not fit wait on scratch disk, beside `out`. A build
+        Most memory to use, in bytes or as "4GiB", half of what is free if not given: particles that do not fit wait on scratch disk, beside `out`. A build
         that needs more even so is refused before it starts.
     progress : callable, optional
         Called with (phase, done, total) as the work goes on.
@@ -84,14 +84,9 @@ def build_atlas(
     if not target.name:
         raise InputError(f"{target} is no name for an atlas: give the folder to make, such as {build.path.stem}.atlas")
     check_target(target)
-    limit = None if memory is None else byte_count(memory)
     with LocalRunner(workers) as runner:
-        jobs = [_plan(each, runner.workers, limit) for each in build.each_epoch()]
-        names = epoch_names([job.build for job in jobs], [job.source.facts.redshift for job in jobs])
-        check_one_view([job.build for job in jobs], names, [job.camera for job in jobs])
-        budgets = [budget for job in jobs for budget in job.budgets]
-        check_memory(budgets, limit)
-        check_scratch(budgets, folder_of(target))
+        jobs, names = _plan_all(build, runner.workers, memory)
+        check_scratch([budget for job in jobs for budget in job.budgets], folder_of(target))
         with workplace(target, _key(jobs), datetime.now(UTC).isoformat(timespec="microseconds")) as place:
             inputs = runner.begin(lambda: [file for job in jobs for file in _inputs(job.build, job.source.facts)])
             create_group(place.atlas)
@@ -117,6 +112,33 @@ def build_atlas(
     return published
 
 
+def foresee_build(
+    build_file: str | PathLike[str], workers: int | None = None, memory: int | str | None = None
+) -> list[str]:
+    """What `build_atlas` would do, a line for each thing: particles, pixels, memory, scratch disk, expected time.
+
+    Parameters, and what is raised, as for `build_atlas`; nothing is written, and no particle is read.
+    """
+    from tilemap.foresee import Species, expected_seconds, machine_speed, told
+
+    workers = workers or usable_cores()
+    jobs, _ = _plan_all(buildfile.load(Path(build_file)), workers, memory)
+    plan = jobs[0].plan
+    species = [
+        Species(
+            planes.species,
+            sum(map(job.source.count, planes.parts)),
+            len(planes.quantities),
+            len(planes.sheets),
+            _searches(job.build, planes),
+            budget,
+        )
+        for job in jobs
+        for planes, budget in zip(job.species, job.budgets, strict=True)
+    ]
+    return told(plan, species, len(jobs), workers, expected_seconds(plan, species, workers, machine_speed()))
+
+
 @dataclass(frozen=True)
 class _Job:
     """One epoch's inputs, and how they are seen and worked on."""
@@ -129,7 +151,24 @@ class _Job:
     budgets: list[Budget]
 
 
-def _plan(build: BuildFile, workers: int, limit: int | None) -> _Job:
+def _plan_all(build: BuildFile, workers: int, memory: int | str | None) -> tuple[list[_Job], list[str]]:
+    """Every epoch's job, and its name."""
+    asked = None if memory is None else byte_count(memory)
+    # What is free decides where particles wait, which changes no byte; how many are read at a time might change one.
+    limit, chunk = asked or half_of_free(), chunk_size(asked)
+    jobs = [_plan(each, workers, limit, chunk) for each in build.each_epoch()]
+    names = epoch_names([job.build for job in jobs], [job.source.facts.redshift for job in jobs])
+    check_one_view([job.build for job in jobs], names, [job.camera for job in jobs])
+    check_memory([budget for job in jobs for budget in job.budgets], asked)
+    return jobs, names
+
+
+def _searches(build: BuildFile, planes: SpeciesPlan) -> bool:
+    """Whether support radii have to be found."""
+    return any(build.snapshot.species[each].smoothing.neighbours is not None for each in planes.parts)
+
+
+def _plan(build: BuildFile, workers: int, limit: int | None, chunk: int) -> _Job:
     source = open_source(build)
     camera = make_camera(build, source.facts)
     level_shapes(camera.rows, camera.columns)
@@ -143,7 +182,8 @@ def _plan(build: BuildFile, workers: int, limit: int | None) -> _Job:
             len(planes.fields),
             workers,
             limit,
-            any(build.snapshot.species[each].smoothing.neighbours is not None for each in planes.parts),
+            chunk,
+            _searches(build, planes),
         )
         for planes in species
     ]

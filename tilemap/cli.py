@@ -99,12 +99,23 @@ def probe(files: tuple[Path, ...], write: Path | None) -> None:
 
 @commands.command()
 @click.argument("build_file", type=PATH, metavar="BUILD.yaml")
-@click.option("--out", required=True, type=PATH, metavar="ATLAS", help="The atlas folder to publish.")
+@click.option("--out", type=PATH, metavar="ATLAS", help="The atlas folder to publish.")
 @click.option("--memory", metavar="SIZE", help="Most memory to use, such as 4GiB.  [default: half of what is free]")
 @click.option("--workers", type=click.IntRange(min=1), metavar="N", help="Cores to use.  [default: all]")
-def build(build_file: Path, out: Path, memory: str | None, workers: int | None) -> None:
-    """Make an atlas from a snapshot, as a build file describes it."""
+@click.option("--dry-run", is_flag=True, help="Say what would be done and what it would take, and do nothing.")
+def build(build_file: Path, out: Path | None, memory: str | None, workers: int | None, dry_run: bool) -> None:
+    """Make an atlas from a snapshot, as a build file describes it.
+
+    A build that was stopped goes on where it was when the same command is given again.
+    """
     limit = None if memory is None else byte_count(memory)
+    if dry_run:
+        from tilemap.build_atlas import foresee_build
+
+        click.echo("\n".join(foresee_build(build_file, workers, limit)))
+        return
+    if out is None:
+        raise click.UsageError("give --out ATLAS, the folder to publish, or --dry-run to see what it would take")
     from tilemap.build_atlas import build_atlas
 
     with shown(sys.stderr) as report:

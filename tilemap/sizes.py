@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from pathlib import Path
 
 from tilemap.errors import InputError
 
@@ -11,6 +12,16 @@ BYTES = {"": 1, "B": 1} | {
     for power, prefix in enumerate("KMGT", start=1)
     for suffix, factor in (("B", 1000), ("iB", 1024))
 }
+
+
+def half_of_free() -> int | None:
+    """Half of the memory that this machine has free, in bytes; None where the system does not say (Linux does)."""
+    try:
+        text = Path("/proc/meminfo").read_text(encoding="ascii")
+    except OSError:
+        return None
+    found = re.search(r"MemAvailable:\s+(\d+) kB", text)
+    return int(found[1]) * 512 if found else None
 
 
 def byte_count(size: int | str) -> int:

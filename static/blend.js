@@ -58,6 +58,22 @@ export function colours(how, [{ ramp: first = '' }, { ramp: second = '', hues = 
 function hued(name, hues) {
   const bright = lightness(name);
   const [least, most] = [bright[0], bright[STEPS - 1]];
+  // The same field of colours for every ramp, as all begin with the same dark.
+  const table = fields.get(hues) ?? field(least, hues);
+  fields.set(hues, table);
+  return {
+    table,
+    across: ACROSS + 1,
+    rowOf: (step) => 1 + Math.round(((bright[step] - least) / (most - least)) * (LEVELS - 1)),
+    columnOf: (step) => 1 + Math.round((step / (STEPS - 1)) * (ACROSS - 1)),
+  };
+}
+
+/** @type {Map<string, Uint32Array>} by way */
+const fields = new Map();
+
+/** Hues across, lightness down, from the dark that ramps begin with. @param {number} least @param {string} hues */
+function field(least, hues) {
   const across = ACROSS + 1;
   const table = new Uint32Array(across * (LEVELS + 1)).fill(pack(...GROUND));
   const way = WAYS[hues];
@@ -80,12 +96,7 @@ function hued(name, hues) {
       table[across * row + k] = pack(Math.round(encoded(r)), Math.round(encoded(g)), Math.round(encoded(blue)));
     }
   }
-  return {
-    table,
-    across,
-    rowOf: (step) => 1 + Math.round(((bright[step] - least) / (most - least)) * (LEVELS - 1)),
-    columnOf: (step) => 1 + Math.round((step / (STEPS - 1)) * (ACROSS - 1)),
-  };
+  return table;
 }
 
 /** A CSS gradient of a way through the hues, at a middling brightness. @param {string} hues */

@@ -5,7 +5,8 @@ The folder for scratch is the one that `tempfile` gives: set TMPDIR to one with 
 
 from __future__ import annotations
 
-import os
+import contextlib
+import re
 import subprocess
 import sys
 import tempfile
@@ -18,14 +19,22 @@ from run import Figure, figure
 
 
 def built(build: Path, out: Path, memory: str) -> tuple[float, float]:
-    """Build with the command in a process of its own; seconds, and the peak of its resident memory in GiB."""
-    start = time.perf_counter()
+    """Build with the command in a process of its own; seconds, and the peak of its resident memory in GiB.
+
+    The peak is asked of the system while the process lives: what it says of one that has ended counts what the parent held
+    when it was started.
+    """
+    start, gib = time.perf_counter(), 0.0
     arguments = ["-m", "tilemap", "build", str(build), "--out", str(out), "--memory", memory]
     process = subprocess.Popen([sys.executable, *arguments], stdout=subprocess.DEVNULL)
-    _, status, usage = os.wait4(process.pid, 0)
-    if status:
-        raise RuntimeError(f"the build ended with {os.waitstatus_to_exitcode(status)}")
-    return time.perf_counter() - start, usage.ru_maxrss / 2**20
+    while process.poll() is None:
+        with contextlib.suppress(OSError):
+            found = re.search(r"VmHWM:\s+(\d+) kB", Path(f"/proc/{process.pid}/status").read_text())
+            gib = max(gib, int(found[1]) / 2**20 if found else 0.0)
+        time.sleep(0.05)
+    if process.returncode:
+        raise RuntimeError(f"the build ended with {process.returncode}")
+    return time.perf_counter() - start, gib
 
 
 def peak() -> Iterator[Figure]:

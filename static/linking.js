@@ -10,6 +10,7 @@ export class Linking {
   constructor(frame) {
     this.frame = frame;
     this.timer = 0;
+    /** what the address was when it was last written or followed */ this.known = location.hash;
     this.word = make('button.word.act', { type: 'button', click: () => this.copy() }, say('link_copy'));
     addEventListener('hashchange', () => this.follow(true));
   }
@@ -38,15 +39,20 @@ export class Linking {
     }
     this.frame.wake();
     const link = write({ ...settled(snapped), ...state.toLink() });
-    if (link !== location.hash) history.replaceState(history.state, '', link);
+    // An address that was changed by hand and is still to be followed is not written over.
+    if (link === location.hash || location.hash !== this.known) return;
+    history.replaceState(history.state, '', link);
+    this.known = location.hash;
   }
 
   /** Goes where the address says. @param {boolean} fly */
   async follow(fly) {
     const { motion, neighbours, state, status } = this.frame;
-    const { view: link, bad } = read(location.hash);
+    const { hash } = location;
+    const { view: link, bad } = read(hash);
     const other = link['beside.atlas'];
     if (other && !neighbours.opened.has(other)) await neighbours.open(other);
+    this.known = hash;
     // A link means the same wherever one was before: what it leaves out comes from the first view. The place comes first,
     // so that no tile of the sheet is asked for at the old one.
     const goal = motion.limits.filled(motion.view).with(link);

@@ -24,7 +24,7 @@ const WORDS = /** @satisfies {Record<string, Told>} */ ({
   ],
   epochs: ['Epochs', 'Epochen'],
   epoch: ['z = {z}', 'z = {z}'],
-  age: ['{age} Gyr', '{age} Mrd. Jahre'],
+  age: ['{age} Gyr', '{age} Mrd. Jahre'],
   times: [' × ', ' · '],
 
   sheets: ['Sheets', 'Blätter'],

@@ -71,3 +71,17 @@ def test_the_word_copies_the_link(screen):
     screen.page.get_by_text("copy link").click()
     screen.page.wait_for_timeout(100)
     assert screen.page.evaluate("navigator.clipboard.readText()") == screen.page.url
+
+
+def test_a_link_typed_while_the_address_is_being_written_is_followed(screen):
+    screen.go("#u=20&v=20&width=30")
+    # The key sets a timer that writes the address, 150 ms on; the page is so busy that it is due at once after the change.
+    screen.page.evaluate("""() => {
+      dispatchEvent(new KeyboardEvent('keydown', { key: 'r' }));
+      setTimeout(() => { location.hash = '#u=70&v=50&width=4'; }, 100);
+      const end = performance.now() + 400;
+      while (performance.now() < end);
+    }""")
+    screen.page.wait_for_timeout(500)
+    screen.settle()
+    assert screen.place() == (70, 50, 4)

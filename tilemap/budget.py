@@ -62,6 +62,7 @@ def make_budget(
     limit: int | None,
     chunk: int,
     neighbours: bool,
+    copies: float = 1.0,
 ) -> Budget:
     """Settle how one species is worked on.
 
@@ -77,11 +78,14 @@ def make_budget(
         Particles to read at a time.
     neighbours : bool
         Whether support radii have to be found.
+    copies : float
+        Images of a particle that are seen, where a view is larger than the box.
     """
     chunk = min(chunk, max(particles, 1))
     row = 4 * (3 + channels)
-    records = int(particles * SPREAD) * row
-    reading = (workers + 2) * chunk * (ROW_BYTES + FIELD_BYTES * fields + row)
+    copies = max(1.0, copies)
+    records = int(particles * SPREAD * copies) * row
+    reading = int((workers + 2) * chunk * (ROW_BYTES + FIELD_BYTES * fields + row) * copies)
     image = 4 * channels * plan.size(plan.local)[0] * plan.size(plan.local)[1]
     group = min(records, GROUP * row)
     sorting = group * (1 + 12 / row)

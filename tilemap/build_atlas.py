@@ -17,6 +17,8 @@ from os import PathLike
 from pathlib import Path
 from typing import Any
 
+import numpy as np
+
 from tilemap import buildfile
 from tilemap.budget import Budget, check_memory, check_scratch, chunk_size, make_budget
 from tilemap.buildfile import BuildFile
@@ -170,7 +172,8 @@ def _searches(build: BuildFile, planes: SpeciesPlan) -> bool:
 
 def _plan(build: BuildFile, workers: int, limit: int | None, chunk: int) -> _Job:
     source = open_source(build)
-    camera = make_camera(build, source.facts)
+    facts = source.facts
+    camera = make_camera(build, facts)
     level_shapes(camera.rows, camera.columns)
     plan = make_plan(camera.columns, camera.rows, camera.slabs)
     species = plan_species(build, source, camera.pixel)
@@ -184,6 +187,7 @@ def _plan(build: BuildFile, workers: int, limit: int | None, chunk: int) -> _Job
             limit,
             chunk,
             _searches(build, planes),
+            camera.volume / float(np.prod(facts.box)) if facts.periodic and facts.box is not None else 1.0,
         )
         for planes in species
     ]

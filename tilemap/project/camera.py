@@ -79,6 +79,11 @@ class Camera:
         return places, radius[which], values[which]
 
     @property
+    def volume(self) -> float:
+        """What is seen, in the cube of the length unit."""
+        return self.columns * self.rows * self.pixel**2 * (self.depth[1] - self.depth[0])
+
+    @property
     def slabs(self) -> int:
         return len(self.edges) - 1
 

@@ -113,9 +113,13 @@ export class State {
     return this.held ? [this.divide, 1] : [0, this.divide];
   }
 
-  /** Another side to compare with, at first the same; or one map again, of the side in hand if that is of this atlas. */
+  /** Another side to compare with, at first of the next sheet; or one map again, of the side in hand if that is of this atlas. */
   turnDivider() {
-    if (!this.divided) return this.set({ sides: [this.side, { ...this.side }], held: 1 });
+    if (!this.divided) {
+      const { sheets } = this.epoch;
+      const next = sheets[(sheets.indexOf(this.sheet) + 1) % sheets.length];
+      return this.set({ sides: [this.side, { ...this.side, sheetName: next.name, how: '', mateName: '' }], held: 1 });
+    }
     this.set({ sides: [this.atlas === this.home ? this.side : this.sides[0]], held: 0 });
   }
 

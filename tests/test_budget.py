@@ -12,7 +12,7 @@ GIB = 1 << 30
 
 def budget(particles=10_000_000, pixels=8192, slabs=1, channels=1, workers=2, limit=None, neighbours=False, copies=1.0):
     plan = make_plan(pixels, pixels, slabs)
-    return make_budget(plan, particles, channels, 0, workers, limit, chunk_size(limit), neighbours, copies)
+    return make_budget(plan, particles, channels, 0, 1, workers, limit, chunk_size(limit), neighbours, copies)
 
 
 @pytest.mark.parametrize("more", [{"particles": 10**8}, {"channels": 3}, {"copies": 4.0}, {"slabs": 8}])

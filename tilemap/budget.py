@@ -8,6 +8,7 @@ from pathlib import Path
 
 from tilemap.errors import InputError
 from tilemap.project.scatter import Plan
+from tilemap.pyramid.grid import SHARD
 from tilemap.spill import GROUP
 
 LARGEST_CHUNK, SMALLEST_CHUNK = 1 << 20, 1 << 16
@@ -17,6 +18,8 @@ PROCESS = 420 << 20
 ROW_BYTES, FIELD_BYTES = 150, 40
 """What a particle takes on its way from file to bucket, and each field besides, copies included: common practice would be
 to count the arrays, and half as much again was measured."""
+PACKED_BYTES = 0.8
+"""Bytes of a packed pixel: 180 KiB a tile of 512 x 512 on a projected map that is full (see pyramid/store.py)."""
 SPREAD = 1.25
 """Records for each particle: what touches several regions is in the bucket of each."""
 NEIGHBOUR_BYTES = 32 + 16
@@ -58,6 +61,7 @@ def make_budget(
     particles: int,
     channels: int,
     fields: int,
+    sheets: int,
     workers: int,
     limit: int | None,
     chunk: int,
@@ -69,8 +73,8 @@ def make_budget(
     Parameters
     ----------
     plan : Plan
-    particles, channels, fields : int
-        Of the species: how many particles, planes and fields to read.
+    particles, channels, fields, sheets : int
+        Of the species: how many particles, planes, fields to read and sheets.
     workers : int
     limit : int or None
         Most memory, in bytes; None where there is no limit.
@@ -88,15 +92,18 @@ def make_budget(
     reading = int((workers + 2) * chunk * (ROW_BYTES + FIELD_BYTES * fields + row) * copies)
     image = 4 * channels * plan.size(plan.local)[0] * plan.size(plan.local)[1]
     group = min(records, GROUP * row)
-    sorting = group * (1 + 12 / row)
+    sorting = group * (2 + 12 / row)
     bases = 1.3 * image + sorting
+    stacks = plan.slabs + (plan.slabs > 1)
+    # Tiles of coarser levels wait until their shards are full, in memory, and all in the notes of what is done.
+    packed = plan.rows * plan.columns * stacks * sheets * PACKED_BYTES
+    waiting = packed * sum(min(1.0, (SHARD << level) / plan.rows) / 4**level for level in range(1, plan.local))
     region = 4 * channels * min(plan.region_px, plan.rows) * min(plan.region_px, plan.columns)
-    drawing = workers * (3.3 * region + (region if plan.slabs > 1 else 0) + sorting / max(1, workers))
-    coarser = workers * 2.5 * image
+    drawing = waiting + workers * (3.3 * region + (region if plan.slabs > 1 else 0) + sorting)
+    coarser = 2.5 * image
     working = int(max(reading, bases, drawing, coarser))
     held = limit is None or PROCESS + working + records + (NEIGHBOUR_BYTES * particles if neighbours else 0) <= limit
-    stacks = plan.slabs + (plan.slabs > 1)
-    scratch = (plan.slabs + stacks) * image
+    scratch = (plan.slabs + stacks) * image + int(packed / 3)
     if not held:
         scratch += records + (NEIGHBOUR_BYTES * particles if neighbours else 0)
     return Budget(chunk, held, PROCESS + working + (records if held else 0), scratch)
@@ -115,7 +122,7 @@ def check_memory(budgets: list[Budget], limit: int | None) -> None:
 def check_scratch(budgets: list[Budget], folder: Path) -> None:
     """InputError where the disk cannot hold what the build writes down in between, in a folder that may be there already."""
     free = shutil.disk_usage(folder.absolute().parent).free
-    there = sum(path.stat().st_size for path in folder.glob("work/**/*") if path.is_file())
+    there = sum(path.stat().st_blocks * 512 for path in folder.glob("work/**/*") if path.is_file())
     needed = max((budget.scratch for budget in budgets), default=0) - there
     if needed > free:
         raise InputError(

@@ -39,7 +39,7 @@ from tilemap.runners.local import LocalRunner, usable_cores
 from tilemap.sheets import plan_species
 from tilemap.sizes import byte_count, half_of_free
 from tilemap.sources import Facts, Source, open_source
-from tilemap.workplace import Workplace, folder_of, workplace
+from tilemap.workplace import Workplace, workplace
 
 FORMAT_VERSION = 1
 _REPORTED = ("tilemap", "numpy", "numba", "scipy", "h5py", "astropy", "isal", "duckdb")
@@ -86,10 +86,11 @@ def build_atlas(
     if not target.name:
         raise InputError(f"{target} is no name for an atlas: give the folder to make, such as {build.path.stem}.atlas")
     check_target(target)
-    with LocalRunner(workers) as runner:
-        jobs, names = _plan_all(build, runner.workers, memory)
-        check_scratch([budget for job in jobs for budget in job.budgets], folder_of(target))
-        with workplace(target, _key(jobs), datetime.now(UTC).isoformat(timespec="microseconds")) as place:
+    jobs, names = _plan_all(build, workers or usable_cores(), memory)
+    budgets = [budget for job in jobs for budget in job.budgets]
+    now = datetime.now(UTC).isoformat(timespec="microseconds")
+    with workplace(target, _key(jobs), now, lambda folder: check_scratch(budgets, folder)) as place:
+        with LocalRunner(workers) as runner:  # its workers end before the place is given up
             inputs = runner.begin(lambda: [file for job in jobs for file in _inputs(job.build, job.source.facts)])
             create_group(place.atlas)
             view = describe_view(build, jobs[0].camera)
@@ -183,6 +184,7 @@ def _plan(build: BuildFile, workers: int, limit: int | None, chunk: int) -> _Job
             sum(map(source.count, planes.parts)),
             len(planes.quantities),
             len(planes.fields),
+            len(planes.sheets),
             workers,
             limit,
             chunk,
@@ -214,10 +216,7 @@ def _sheets(job: _Job, place: Workplace, epoch: str, runner: LocalRunner, progre
         work.mkdir(parents=True, exist_ok=True)
         done = work / "sheets.json"
         if not done.exists():
-            reading = Reading(job.build, job.source, job.camera, job.plan, planes, budget, runner, progress, work)
-            buckets, sums = reading.read()
-            drawing = SpeciesDrawing(job.build, job.plan, planes, buckets, runner, progress, work)
-            made = {"sheets": drawing.write(place.atlas / epoch, sums), "records": int(buckets.runs.counts.sum())}
+            made = _species(job, planes, budget, place.atlas / epoch, work, runner, progress)
             write_whole(done, json.dumps(made, allow_nan=False).encode())
             _clear(work, done)
         made = json.loads(done.read_bytes())
@@ -225,9 +224,20 @@ def _sheets(job: _Job, place: Workplace, epoch: str, runner: LocalRunner, progre
         entries += made["sheets"]
     if in_view == 0:
         build = job.build
+        shutil.rmtree(place.work / epoch)  # nothing to go on from
         raise InputError(f"{build.path}: view: no particle lies in it; {_where(build, job.camera, job.source.facts)}")
     order = list(job.build.sheets)
     return sorted(entries, key=lambda sheet: order.index(sheet["name"]))
+
+
+def _species(
+    job: _Job, planes: SpeciesPlan, budget: Budget, folder: Path, work: Path, runner: LocalRunner, progress: Report
+) -> dict[str, Any]:
+    """Make the sheets of one species; in a function of its own, so that nothing of it is held when the next is read."""
+    reading = Reading(job.build, job.source, job.camera, job.plan, planes, budget, runner, progress, work)
+    buckets, sums = reading.read()
+    drawing = SpeciesDrawing(job.build, job.plan, planes, buckets, runner, progress, work)
+    return {"sheets": drawing.write(folder, sums), "records": int(buckets.runs.counts.sum())}
 
 
 def _clear(work: Path, done: Path) -> None:

@@ -34,6 +34,8 @@ SUMMARY_PX = 1024
 """Percentiles are those of the whole at the finest level that has no longer side."""
 
 
+AHEAD = 8
+"""Regions that may be done while another's turn is not over: they differ in what is in them."""
 PIXEL_NS, RECORD_NS = 8.0, 100.0
 """What drawing takes for each pixel of each slab and for each record, about: for progress that goes on evenly."""
 
@@ -103,10 +105,9 @@ class SpeciesDrawing:
         # What the regions leave behind: the image at level `local`, from which the coarser ones are halved.
         self.stacks = plan.slabs + (plan.slabs > 1)
         self.coarse = ImageFile(work / "coarse", (self.stacks, channels, rows, columns))
-        self._done, self._all = (
-            0.0,
-            self._cost_of_bases(range(plan.slabs)) + sum(map(self._cost, range(plan.regions[0] * plan.regions[1]))),
-        )
+        self._files = [self.bases, self.coarse]
+        regions = range(plan.regions[0] * plan.regions[1])
+        self._done, self._all = 0.0, self._cost_of_bases(range(plan.slabs)) + sum(map(self._cost, regions))
 
     def write(self, folder: Path, sums: NDArray[np.float64]) -> list[dict[str, Any]]:
         """Draw everything that was read and write the species' sheets below `folder`; their entries in atlas.json."""
@@ -122,7 +123,8 @@ class SpeciesDrawing:
         totals = np.zeros((plan.slabs, len(self.planes.quantities)))
         for unit in self._draw_units(writers):
             totals += unit
-        list(self.runner.map(lambda stack: self._coarser(stack, writers), range(self.stacks)))
+        for stack in range(self.stacks):
+            self._coarser(stack, writers)
         entries = []
         for sheet, coding, writer in zip(sheets, codings, writers, strict=True):
             plane_totals = totals[:, sheet.plane] * self.planes.scales[sheet.plane]
@@ -134,6 +136,8 @@ class SpeciesDrawing:
                 entry |= _summary(self._small(sheet))
             writer.close(entry)
             entries.append(entry)
+        for file in self._files:
+            file.close()
         return entries
 
     def _writer(self, sheet: SheetPlan, folder: Path, coding: Coding) -> SheetWriter:
@@ -142,6 +146,7 @@ class SpeciesDrawing:
         if sheet.sheet.kind != "peak":
             return SheetWriter(*given)
         coarse = ImageFile(self.work / f"peak {sheet.name}", (plan.slabs, 1, *plan.size(plan.local)), np.uint16)
+        self._files.append(coarse)
         return PeakWriter(*given, coarse, plan.local)
 
     def _cost(self, region: int) -> float:
@@ -177,11 +182,11 @@ class SpeciesDrawing:
     def _draw_units(self, writers: list[SheetWriter]) -> Iterator[NDArray[np.float64]]:
         """The sum of each slab's planes (slabs, planes) over each unit, drawn now or by a build that was stopped."""
         units = Unit.all_of(self.plan)
-        packs = {unit.number: load_pack(self.work / f"unit-{unit.number:06d}.npz") for unit in units}
-        regions = [region for unit in units if packs[unit.number] is None for region in unit.regions]
-        drawn = self.runner.map(lambda region: self._region(region, writers), regions)
+        done = {unit.number for unit in units if self._pack(unit).exists()}
+        regions = [region for unit in units if unit.number not in done for region in unit.regions]
+        drawn = self.runner.map(lambda region: self._region(region, writers), regions, ahead=AHEAD)
         for unit in units:
-            pack = packs.pop(unit.number)
+            pack = load_pack(self._pack(unit)) if unit.number in done else None
             if pack is not None:
                 _take_up(pack, writers)
                 self._advance(sum(map(self._cost, unit.regions)))
@@ -192,8 +197,11 @@ class SpeciesDrawing:
                 totals += next(drawn)
                 self._advance(self._cost(region))
             waiting = [writer.waiting(unit.rows, unit.columns) for writer in writers]
-            save_pack(self.work / f"unit-{unit.number:06d}.npz", totals=totals, **_packed(waiting))
+            save_pack(self._pack(unit), totals=totals, **_packed(waiting))
             yield totals
+
+    def _pack(self, unit: Unit) -> Path:
+        return self.work / f"unit-{unit.number:06d}.npz"
 
     def _region(self, region: int, writers: list[SheetWriter]) -> NDArray[np.float64]:
         """Draw, code and halve a region; the sum of each slab's planes."""
@@ -244,8 +252,13 @@ class SpeciesDrawing:
         slab = stack if stack < plan.slabs else WHOLE
         image = self.coarse.read(stack, (0, 0), plan.size(plan.local))
         for level in range(plan.local, plan.levels):
-            for sheet, writer in zip(self.planes.sheets, writers, strict=True):
-                writer.put(level, slab, (0, 0), self.planes.values(sheet, image))
+
+            def put(row: int, level: int = level, image: NDArray[np.float32] = image) -> None:
+                lines = image[:, row * TILE : (row + 1) * TILE]
+                for sheet, writer in zip(self.planes.sheets, writers, strict=True):
+                    writer.put(level, slab, (row, 0), self.planes.values(sheet, lines))
+
+            list(self.runner.map(put, range(-(-image.shape[1] // TILE))))
             if level + 1 < plan.levels:
                 image = halve(image)
 

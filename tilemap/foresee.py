@@ -8,7 +8,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from tilemap.budget import Budget
+from tilemap.budget import PACKED_BYTES, Budget
 from tilemap.project.camera import Camera
 from tilemap.project.scatter import Buckets, Plan, make_plan
 from tilemap.project.stamps import stamps_for
@@ -21,8 +21,6 @@ from tilemap.spill import Runs
 
 FILE_NS = 60.0
 """What reading and converting a particle takes besides, from a file that is in the system's cache already."""
-TILE_BYTES = 0.8
-"""Bytes of a packed pixel: 180 KiB a tile of 512 x 512 on a projected map that is full (see pyramid/store.py)."""
 SHARED = 0.9
 """How much of each further core is gained: two workers were measured 1.8 times as fast as one."""
 
@@ -96,7 +94,7 @@ def told(plan: Plan, species: Sequence[Species], epochs: int, workers: int, seco
     gib = 2**30
     stacks = plan.slabs + (plan.slabs > 1)
     sheets = sum(each.sheets for each in species)
-    atlas = plan.rows * plan.columns * stacks * sheets * TILE_BYTES * 4 / 3
+    atlas = plan.rows * plan.columns * stacks * sheets * PACKED_BYTES * 4 / 3
     spilled = sorted({each.name for each in species if not each.budget.held})
     lines = [f"particles  {each.particles:,} of {each.name}" for each in species]
     return [

@@ -126,17 +126,16 @@ class Reading:
         search = Neighbours(count, neighbours, box, self.budget.chunk, lambda *what: self._fresh(species, *what))
         known = load_pack(done)
         if known is not None and not self.budget.held:
-            search.take_up(
-                Runs(-(-count // self.budget.chunk), 2, self.work / f"radii {species}", np.float64),
-                float(known["smallest"]),
-            )
-            return search
+            found = Runs(-(-count // self.budget.chunk), 2, self.work / f"radii {species}", np.float64)
+            if found.counts.sum() == count:
+                search.take_up(found, float(known["smallest"]))
+                return search
         try:
             search.find(lambda: self._positions(species), self.runner, lambda done: self.report(phase, done, count))
         except InputError as error:
             raise InputError(f"snapshot.species.{species}: {error}") from error
-        save_pack(done, smallest=np.array(search.smallest))
         if not self.budget.held:
+            save_pack(done, smallest=np.array(search.smallest))
             shutil.rmtree(self.work / f"cells {species}")
         return search
 

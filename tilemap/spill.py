@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from tilemap.pyramid.store import write_whole
 
-GROUP = 1 << 22
+GROUP = 1 << 21
 """Most rows that `groups` gives at once, but for a single piece that is larger. No setting changes it, so that sums are
 added in the same order whatever memory there is."""
 
@@ -68,7 +68,7 @@ class Runs:
         else:
             number = len(self._starts)
             with open(self._path(number, "rows"), "wb") as file:
-                np.ascontiguousarray(rows, dtype=self.dtype).tofile(file)
+                file.write(np.ascontiguousarray(rows, dtype=self.dtype).data)
             part = self._path(number, "part.npz")
             np.savez(part, starts=starts, **notes)  # type: ignore[arg-type]
             part.rename(self._path(number, "npz"))
@@ -96,12 +96,9 @@ class Runs:
 
     def _read(self, number: int, first: int, last: int) -> NDArray:
         size = self.width * self.dtype.itemsize
-        handle = os.open(self._path(number, "rows"), os.O_RDONLY)
-        try:
-            data = os.pread(handle, (last - first) * size, first * size)
-        finally:
-            os.close(handle)
-        return np.frombuffer(data, dtype=self.dtype).reshape(last - first, self.width)
+        with open(self._path(number, "rows"), "rb") as file:
+            file.seek(first * size)
+            return np.fromfile(file, dtype=self.dtype, count=(last - first) * self.width).reshape(-1, self.width)
 
     def _path(self, number: int, ending: str) -> Path:
         assert self.folder is not None

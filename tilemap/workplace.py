@@ -16,7 +16,7 @@ import fcntl
 import json
 import os
 import shutil
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
@@ -50,8 +50,11 @@ def folder_of(target: Path) -> Path:
 
 
 @contextmanager
-def workplace(target: Path, build: dict[str, Any], begun: str) -> Iterator[Workplace]:
-    """Work on a build while the context lasts. Wrong input takes the folder away; what else goes wrong leaves it.
+def workplace(
+    target: Path, build: dict[str, Any], begun: str, check: Callable[[Path], None] = lambda folder: None
+) -> Iterator[Workplace]:
+    """Work on a build while the context lasts. Wrong input takes the folder away, unless a species is done already; what
+    else goes wrong leaves it.
 
     Parameters
     ----------
@@ -60,6 +63,8 @@ def workplace(target: Path, build: dict[str, Any], begun: str) -> Iterator[Workp
         All that decides the bytes of the atlas: the same again goes on where it stopped, another begins anew.
     begun : str
         The time now; a build that goes on keeps the time at which it was begun.
+    check : callable
+        Called with the folder when it is ours; what it raises leaves what was there.
 
     Raises
     ------
@@ -69,21 +74,31 @@ def workplace(target: Path, build: dict[str, Any], begun: str) -> Iterator[Workp
     folder = folder_of(target)
     if folder.is_symlink() or (folder.exists() and not _left_by_a_build(folder)):
         raise InputError(f"{folder} is in the way and not left by a build: move it, or name another atlas")
+    fresh = not folder.exists()
     folder.mkdir(exist_ok=True)
     with open(folder / "lock", "w") as lock:
         try:
             fcntl.flock(lock, fcntl.LOCK_EX | fcntl.LOCK_NB)
+            if os.fstat(lock.fileno()).st_ino != os.stat(folder / "lock").st_ino:
+                raise BlockingIOError
         except OSError:
             raise InputError(
                 f"{target} is being built by another process: wait for it, or name another atlas"
             ) from None
+        try:
+            check(folder)
+        except InputError:
+            if fresh:
+                _remove(folder)
+            raise
         here = Workplace(folder, _begun(folder, build, begun))
         here.atlas.mkdir(exist_ok=True)
         here.work.mkdir(exist_ok=True)
         try:
             yield here
         except InputError:
-            _remove(folder)
+            if not any(here.work.glob("*/*/sheets.json")):
+                _remove(folder)
             raise
         _remove(folder)
 
@@ -96,7 +111,8 @@ def _begun(folder: Path, build: dict[str, Any], begun: str) -> str:
     """When the build that is here was begun; where it is another one, what it left is taken away and ours begins."""
     with contextlib.suppress(OSError, ValueError, TypeError, KeyError):
         mark = json.loads((folder / MARK).read_bytes())
-        if mark["build"] == json.loads(json.dumps(build)):
+        # Without the beginnings of an atlas there is nothing to go on from: it was published, or never begun.
+        if mark["build"] == json.loads(json.dumps(build)) and (folder / "atlas" / "zarr.json").exists():
             return str(mark["begun"])
     for each in folder.iterdir():
         if each.name != "lock":
@@ -110,6 +126,7 @@ def _remove(folder: Path) -> None:
     for each in folder.iterdir():
         if each.name != "lock":
             shutil.rmtree(each, ignore_errors=True) if each.is_dir() else each.unlink()
-    (folder / "lock").unlink(missing_ok=True)
-    with contextlib.suppress(OSError):
-        os.rmdir(folder)
+    if len(list(folder.iterdir())) == 1:
+        (folder / "lock").unlink(missing_ok=True)
+        with contextlib.suppress(OSError):
+            os.rmdir(folder)

@@ -196,7 +196,7 @@ def cores() -> Iterator[Figure]:
         folder = Path(name)
         build = write_crowd(folder, 10_000_000, 8192)
         one, two = best_of(
-            3,
+            8,
             lambda: build_atlas(build, folder / "one.atlas", workers=1),
             lambda: build_atlas(build, folder / "two.atlas", workers=2),
         )

@@ -94,7 +94,7 @@ class Cycle:
             _refine(coarse, inside[:, 2 * start : 2 * stop], corner + start, corner, stop - start, columns, weights)
 
         starts = range(0, rows, STRIP_ROWS)
-        for _ in runner.map(strip, starts) if runner else map(strip, starts):
+        for _ in runner.map(strip, starts, ahead=len(starts)) if runner else map(strip, starts):
             pass
 
     def _draw_into(self, image: NDArray[np.float32], parts: list[NDArray[np.float32]], level: int) -> None:
@@ -122,7 +122,7 @@ class Cycle:
             draw_bands(range(count))
             return
         for parity in (0, 1):
-            for _ in runner.map(draw_bands, [range(band, band + 1) for band in range(parity, count, 2)]):
+            for _ in runner.map(draw_bands, [range(band, band + 1) for band in range(parity, count, 2)], ahead=count):
                 pass
 
     def base(self, buckets: Buckets, slab: int, runner: LocalRunner) -> NDArray[np.float32]:

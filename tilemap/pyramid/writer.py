@@ -54,6 +54,7 @@ class SheetWriter:
         self.shapes = level_shapes(*shape)
         self._lock = threading.Lock()
         self._waiting: dict[Shard, dict[tuple[int, int], bytes | None]] = {}
+        self._empty: dict[Shard, dict[tuple[int, int], bytes | None]] = {}
         self._there = set(self._written())
         self._describe({})
 
@@ -108,15 +109,20 @@ class SheetWriter:
             tiles[row % across[0], column % across[1]] = tile
             if len(tiles) < expected:
                 return
-            del self._waiting[shard]
         stack, deep = (self.folder / "whole", 0) if slab == WHOLE and self.slabs > 1 else (self.folder, max(slab, 0))
         write_shard(stack / str(level), (deep, shard[2], shard[3]), tiles, (across[0], across[1]))
+        with self._lock:  # until the shard is there, its tiles are waiting; of an empty one there will be no file
+            del self._waiting[shard]
+            self._there.add(shard)
+            if not any(tiles.values()):
+                self._empty[shard] = tiles
 
     def waiting(self, rows: range, columns: range) -> list[WaitingTile]:
-        """Tiles whose shards are not complete, of those that lie within rows and columns of tiles of the finest level."""
+        """Tiles whose shards are not complete, or are no files as they are empty, of those that lie within rows and columns
+        of tiles of the finest level."""
         with self._lock:
             found = []
-            for (level, slab, shard_row, shard_column), tiles in self._waiting.items():
+            for (level, slab, shard_row, shard_column), tiles in [*self._waiting.items(), *self._empty.items()]:
                 across = tuple(side // TILE for side in shard_shape(self.shapes[level]))
                 for (i, j), tile in tiles.items():
                     row, column = shard_row * across[0] + i, shard_column * across[1] + j

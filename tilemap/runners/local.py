@@ -46,10 +46,11 @@ class LocalRunner:
             wait([future])
         return future
 
-    def map(self, work: Callable[[Piece], Result], pieces: Iterable[Piece]) -> Iterator[Result]:
-        """`work` on every piece; results in order. At most one piece more than there are workers is in memory at once.
+    def map(self, work: Callable[[Piece], Result], pieces: Iterable[Piece], ahead: int = 1) -> Iterator[Result]:
+        """`work` on every piece; results in order. At most `ahead` pieces more than there are workers are in memory at once.
 
-        The first error stops taking pieces, and is raised here.
+        Where results are small, looking further ahead keeps workers busy while a piece takes long whose turn it is. The
+        first error stops taking pieces, and is raised here.
         """
         if self.workers == 1:
             yield from map(work, pieces)
@@ -58,7 +59,7 @@ class LocalRunner:
         try:
             for piece in pieces:
                 waiting.append(self._pool.submit(work, piece))
-                if len(waiting) > self.workers:
+                if len(waiting) >= self.workers + ahead:
                     yield waiting.popleft().result()
             while waiting:
                 yield waiting.popleft().result()
